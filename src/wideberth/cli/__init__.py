@@ -1,0 +1,1 @@
+"""The shell door: parse, call, show."""

@@ -1,0 +1,1 @@
+"""Goals, guards and region made one problem, searched, and judged."""

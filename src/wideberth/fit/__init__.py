@@ -1,0 +1,1 @@
+"""Least squares, diagnosis, and models as quadratics with covariance."""

@@ -1,0 +1,227 @@
+"""Fitted models as frozen records, and how one model becomes a quadratic in the numeric factors.
+
+A model's columns are products of one second-order term of the numeric coded factors with
+contrasts of categorical factors or of blocks. With the levels and the block chosen, every model
+is therefore a plain quadratic with a covariance: that is all that the floors above need.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from wideberth.quadratic.terms import n_terms
+from wideberth.study.records import CategoricalFactor, Finding, FloatArray, Grade, Study
+
+
+@dataclass(frozen=True, slots=True)
+class Term:
+    """One column of a model matrix.
+
+    Attributes
+    ----------
+    name : str
+        As printed: ``1``, ``a``, ``a^2``, ``a*b``, ``colour[red]``, ``a*colour[red]``,
+        ``block[north]``.
+    monomial : int
+        Place of its numeric part among the second-order terms of the numeric factors.
+    contrast : tuple of (int, int), optional
+        Categorical factor and the contrast of it that multiplies the numeric part.
+    block : int, optional
+        The contrast of the blocks that multiplies the numeric part.
+    """
+
+    name: str
+    monomial: int
+    contrast: tuple[int, int] | None = None
+    block: int | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class FittedTerm:
+    """One coefficient in coded units with its standard error and two-sided t test.
+
+    ``se``, ``t`` and ``p`` are ``None`` where no residual degrees of freedom are left, the model
+    is exact, or the fit is exact.
+    """
+
+    term: str
+    coded: float
+    se: float | None
+    t: float | None
+    p: float | None
+
+
+@dataclass(frozen=True, slots=True)
+class LackOfFit:
+    """Lack of fit against true replicates: same settings, same block.
+
+    ``ss_*`` are sums of squares; ``rms_size`` is sqrt of the mean square of what the replicates
+    cannot explain, in the response's unit (0 when the lack-of-fit mean square is smaller than the
+    pure-error one).
+    """
+
+    f: float
+    df: tuple[int, int]
+    p: float
+    ss_lack: float
+    ss_pure: float
+    rms_size: float
+
+
+@dataclass(frozen=True, slots=True)
+class RunDiagnosis:
+    """How one run stands to the model. Studentized is external; ``None`` where undefined."""
+
+    row: int
+    observed: float
+    fitted: float
+    residual: float
+    leverage: float
+    studentized: float | None
+    cook: float | None
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Model:
+    """One response's model.
+
+    Attributes
+    ----------
+    exact : bool
+        Known by its formula: no noise, no covariance, no degrees of freedom.
+    order : int
+        Order actually used.
+    terms : tuple of Term, length q
+    coefficients : ndarray, shape (q,)
+        Coded units.
+    covariance : ndarray, shape (q, q)
+        Unscaled: (X'X)^-1; the coefficients' covariance is ``s**2`` times this. Zero if exact.
+    n_runs : int
+        Runs that were fitted (0 if exact).
+    df_residual : int
+        0 if exact or saturated.
+    s : float or None
+        Residual standard deviation; 0.0 for an exact model and an exact fit, ``None`` when no
+        degrees of freedom are left.
+    noise_free : bool
+        Measured, with residuals at rounding level.
+    reasons : mapping
+        Why a field is ``None``, by the field's name.
+    grade : Grade
+        The worst grade among the findings; ``do not use`` makes every answer ``unsupported``.
+    """
+
+    response: str
+    unit: str
+    exact: bool
+    order: int
+    terms: tuple[Term, ...]
+    coefficients: FloatArray
+    covariance: FloatArray
+    table: tuple[FittedTerm, ...]
+    n_runs: int
+    df_residual: int
+    s: float | None
+    r2: float | None
+    r2_adjusted: float | None
+    press: float | None
+    r2_press: float | None
+    lack_of_fit: LackOfFit | None
+    runs: tuple[RunDiagnosis, ...]
+    noise_free: bool
+    findings: tuple[Finding, ...]
+    grade: Grade
+    reasons: Mapping[str, str] = field(default_factory=dict)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Models:
+    """The models of all responses, in the study's order, with the study they came from."""
+
+    study: Study
+    models: tuple[Model, ...]
+
+    def __getitem__(self, response: str) -> Model:
+        """Give one response's model by its name."""
+        for model in self.models:
+            if model.response == response:
+                return model
+        raise KeyError(response)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Surface:
+    """A model with its levels and block chosen: a quadratic in the k numeric coded factors.
+
+    Attributes
+    ----------
+    coefficients : ndarray, shape (p,)
+        In the order of ``quadratic.terms``.
+    covariance : ndarray, shape (p, p)
+        Unscaled; ``f(x)' covariance f(x)`` is the leverage h(x).
+    s : float
+        Standard deviation of one batch (0.0 where there is no noise).
+    df : int
+        Residual degrees of freedom (0 where there are none).
+    """
+
+    coefficients: FloatArray
+    covariance: FloatArray
+    s: float
+    df: int
+
+
+def sum_to_zero(n_levels: int) -> FloatArray:
+    """Give the contrasts of each level: shape (n_levels, n_levels - 1), columns summing to 0."""
+    return np.vstack([np.eye(n_levels - 1), -np.ones((1, n_levels - 1))])
+
+
+def design_map(
+    model: Model, study: Study, *, levels: tuple[int, ...] = (), block: int | None = None
+) -> FloatArray:
+    """Map a model's q coefficients to the p second-order coefficients at chosen levels and block.
+
+    Parameters
+    ----------
+    levels : tuple of int
+        Index of the level of each categorical factor.
+    block : int, optional
+        Index of the block; ``None`` means the average of the blocks.
+
+    Returns
+    -------
+    ndarray, shape (p, q)
+        With ``f`` the second-order terms at a setting, the model row there is ``f @ map``.
+    """
+    mapped = np.zeros((n_terms(len(study.numeric)), len(model.terms)))
+    for column, term in enumerate(model.terms):
+        weight = 1.0
+        if term.contrast is not None:
+            factor, contrast = term.contrast
+            weight *= sum_to_zero(len(study.categorical[factor].levels))[levels[factor], contrast]
+        if term.block is not None:
+            n_blocks = len(study.runs.blocks)
+            weight *= 0.0 if block is None else sum_to_zero(n_blocks)[block, term.block]
+        mapped[term.monomial, column] += weight
+    return mapped
+
+
+def surface(
+    model: Model, study: Study, *, levels: tuple[int, ...] = (), block: int | None = None
+) -> Surface:
+    """Reduce a model to its quadratic at chosen levels and block (``None``: block average)."""
+    mapped = design_map(model, study, levels=levels, block=block)
+    return Surface(
+        coefficients=mapped @ model.coefficients,
+        covariance=mapped @ model.covariance @ mapped.T,
+        s=model.s or 0.0,
+        df=model.df_residual,
+    )
+
+
+def level_names(factors: tuple[CategoricalFactor, ...], levels: tuple[int, ...]) -> dict[str, str]:
+    """Name the chosen level of each categorical factor."""
+    return {f.name: f.levels[i] for f, i in zip(factors, levels, strict=True)}

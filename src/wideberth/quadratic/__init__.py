@@ -1,0 +1,1 @@
+"""Stacks of quadratics: terms, values, bounds over boxes, extremes on spheres."""

@@ -1,0 +1,1 @@
+"""The memo and its figures, written from a record; nothing here computes."""

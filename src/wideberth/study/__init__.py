@@ -1,0 +1,1 @@
+"""What a person states and measured: records, reading, checking, coding, templates."""

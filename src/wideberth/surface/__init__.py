@@ -1,0 +1,1 @@
+"""Canonical and ridge analysis of fitted surfaces."""
