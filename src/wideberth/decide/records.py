@@ -9,7 +9,15 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Literal
 
-from wideberth.study.records import Finding, GuardKind, Setting, Side, Want
+from wideberth.study.records import (
+    BoolArray,
+    Finding,
+    FloatArray,
+    GuardKind,
+    Setting,
+    Side,
+    Want,
+)
 
 Status = Literal["met", "conflict", "provisional", "unproven", "unreached", "unsupported"]
 
@@ -164,3 +172,42 @@ class Choice:
     conflicts: tuple[Conflict, ...]
     confirmation: Confirmation | None
     findings: tuple[Finding, ...]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class LimitMap:
+    """The margin of one limit over a map: 0 where it is just met, shape (n_up, n_across)."""
+
+    response: str
+    side: Side
+    value: float
+    margin: FloatArray
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class FactorMap:
+    """Two factors across and up through the setpoint, the others held there.
+
+    With one factor ``up`` is ``""`` and the arrays have one row. Margins are those of the setting
+    itself, without room; blocks at the worst one.
+
+    Attributes
+    ----------
+    across_actual, up_actual : ndarray, shapes (n_across,) and (n_up,)
+        Own units.
+    means : mapping of response to ndarray, shape (n_up, n_across)
+        Fitted means, block average, own units.
+    desirability : ndarray or None, shape (n_up, n_across)
+        Overall desirability of the fitted means; ``None`` without goals.
+    explored : ndarray of bool, shape (n_up, n_across)
+        Inside the explored region.
+    """
+
+    across: str
+    up: str
+    across_actual: FloatArray
+    up_actual: FloatArray
+    means: Mapping[str, FloatArray]
+    desirability: FloatArray | None
+    margins: tuple[LimitMap, ...]
+    explored: BoolArray
