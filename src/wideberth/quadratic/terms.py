@@ -72,3 +72,22 @@ def feature_gradients(x: FloatArray) -> FloatArray:
     slopes[..., place, first] = x[..., second]
     slopes[..., place, second] = x[..., first]
     return slopes
+
+
+def shift_map(shift: FloatArray) -> FloatArray:
+    """Give T, shape (p, p), with ``features(x + shift) == T @ features(x)`` for every x.
+
+    Coefficients of the shifted polynomial are ``T.T @ beta``, a covariance becomes ``T.T @ C @ T``.
+    """
+    k = len(shift)
+    mapped = np.eye(n_terms(k))
+    diagonal = np.arange(k)
+    mapped[1 + diagonal, 0] = shift
+    mapped[1 + k + diagonal, 0] = shift * shift
+    mapped[1 + k + diagonal, 1 + diagonal] = 2 * shift
+    first, second = (np.array(index, dtype=int) for index in pairs(k))
+    place = 1 + 2 * k + np.arange(len(first))
+    mapped[place, 0] = shift[first] * shift[second]
+    mapped[place, 1 + second] = shift[first]
+    mapped[place, 1 + first] = shift[second]
+    return mapped

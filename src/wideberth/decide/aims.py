@@ -1,0 +1,153 @@
+"""What a search can be after: a program to refine with, and how to score a setting exactly.
+
+Scores are evaluated from the models themselves, never taken from the refinement.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+
+from wideberth.decide.arena import (
+    Arena,
+    Cuts,
+    goal_targets,
+    goal_values,
+    limit_margins,
+    log_desirability,
+)
+from wideberth.decide.program import Program
+from wideberth.decide.questions import (
+    Question,
+    best_desirability,
+    largest_margin,
+    largest_uncapped,
+    largest_value,
+    least_violation,
+)
+from wideberth.quadratic.terms import features
+from wideberth.study.records import FloatArray
+
+_GRADED_BELOW = 0.05
+_FIRST_TARGET = 1e-2
+
+Scorer = Callable[[Arena, FloatArray, FloatArray], FloatArray]
+"""Takes the arena, settings (N, k) and their hard values (n_hard, N)."""
+
+
+@dataclass(frozen=True, slots=True)
+class Aim:
+    """One aim of a search.
+
+    Attributes
+    ----------
+    program : Question
+    score : Scorer
+        What is maximised, (N,).
+    graded : Scorer
+        The same for screening: finite where the score is minus infinity, (N,).
+    targets : Scorer
+        Where the targets of a refinement start, (N, T).
+    holds_limits : bool
+        Whether a setting that breaks a limit is out of the question.
+    """
+
+    program: Question
+    score: Scorer
+    graded: Scorer
+    targets: Scorer
+    holds_limits: bool
+
+
+def _targets_of_goals(arena: Arena, x: FloatArray) -> FloatArray:
+    return goal_targets(arena, goal_values(arena, x))
+
+
+def _log_d(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+    return log_desirability(arena, _targets_of_goals(arena, x))
+
+
+def _graded_log_d(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+    targets = _targets_of_goals(arena, x)
+    short = np.minimum(targets - _GRADED_BELOW, 0.0).sum(axis=1) / _GRADED_BELOW
+    graded: FloatArray = log_desirability(arena, np.maximum(targets, _GRADED_BELOW)) + short
+    return graded
+
+
+def _first_goal_targets(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+    return np.clip(0.9 * _targets_of_goals(arena, x), _FIRST_TARGET, 0.9)
+
+
+def _smallest_uncapped(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+    smallest: FloatArray = _targets_of_goals(arena, x).min(axis=1)
+    return smallest
+
+
+def _smallest_margin(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+    smallest: FloatArray = limit_margins(arena, values).min(axis=0)
+    return smallest
+
+
+def _violation(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+    total: FloatArray = np.minimum(limit_margins(arena, values), 0.0).sum(axis=0)
+    return total
+
+
+def _just_below(score: Scorer) -> Scorer:
+    def targets(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+        return score(arena, x, values)[:, None] - _FIRST_TARGET
+
+    return targets
+
+
+def _violations(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+    return np.minimum(limit_margins(arena, values), 0.0).T - _FIRST_TARGET
+
+
+BEST = Aim(best_desirability, _log_d, _graded_log_d, _first_goal_targets, holds_limits=True)
+SAFEST = Aim(
+    largest_margin,
+    _smallest_margin,
+    _smallest_margin,
+    _just_below(_smallest_margin),
+    holds_limits=False,
+)
+LEAST_POOR = Aim(
+    largest_uncapped,
+    _smallest_uncapped,
+    _smallest_uncapped,
+    _just_below(_smallest_uncapped),
+    holds_limits=True,
+)
+NEAREST = Aim(least_violation, _violation, _violation, _violations, holds_limits=False)
+
+
+def peak(curve: FloatArray) -> Aim:
+    """Aim at the largest value of one quadratic, coefficients (p,), without regard to limits."""
+
+    def value(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+        result: FloatArray = features(x) @ curve
+        return result
+
+    return Aim(largest_value(curve), value, value, _just_below(value), holds_limits=False)
+
+
+def tie_break(goal_floor: FloatArray, least_log_d: float, *, by_margin: bool) -> Aim:
+    """Among settings that keep log D, aim at the one farthest from trouble.
+
+    ``goal_floor`` (n_goals,) is what each goal's target must keep in the refinement; settings
+    below ``least_log_d`` score minus infinity.
+    """
+    height = _smallest_margin if by_margin else _smallest_uncapped
+    question = largest_margin if by_margin else largest_uncapped
+
+    def program(arena: Arena, cuts: Cuts) -> Program:
+        return question(arena, cuts, goal_floor)
+
+    def score(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+        kept = _log_d(arena, x, values) >= least_log_d
+        return np.where(kept, height(arena, x, values), -np.inf)
+
+    return Aim(program, score, height, _just_below(height), holds_limits=True)

@@ -1,0 +1,59 @@
+"""How many confirmation runs at a setting would be expected to prove its guarded limits.
+
+New runs at a setting that is already chosen owe nothing to the search, so their own bound, with
+the standard deviation pooled from the model and the new runs, is exact however it was chosen.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from wideberth.decide.arena import LimitSide
+from wideberth.decide.guards import Guard
+from wideberth.decide.problem import Problem, judged_blocks
+from wideberth.decide.records import Confirmation
+from wideberth.fit.records import surface
+from wideberth.quadratic.terms import features
+from wideberth.study.records import FloatArray
+
+MOST_RUNS = 10
+
+
+def confirmation_runs(
+    problem: Problem, levels: tuple[int, ...], x: FloatArray
+) -> Confirmation | None:
+    """Count the runs at a coded setting (k,) that would be expected to meet every guarded limit.
+
+    ``None`` when no limit is guarded against noise.
+    """
+    guarded = [side for side in problem.sides if problem.guarding[side.response].smooth is not None]
+    if not guarded:
+        return None
+    for n_runs in range(1, MOST_RUNS + 1):
+        if all(_expected(problem, side, levels, x, n_runs) for side in guarded):
+            runs = "run" if n_runs == 1 else "runs"
+            return Confirmation(
+                n_runs,
+                f"{n_runs} confirmation {runs} at this setting would be expected to prove it,"
+                " judged by their own bound with the pooled standard deviation",
+            )
+    return Confirmation(
+        None,
+        f"even {MOST_RUNS} confirmation runs at this setting would not be expected to prove it",
+    )
+
+
+def _expected(
+    problem: Problem, side: LimitSide, levels: tuple[int, ...], x: FloatArray, n_runs: int
+) -> bool:
+    """Tell whether the new runs' own bound, at the expected mean and s, meets one limit side."""
+    model, guard = problem.models[side.response], problem.guarding[side.response].guard
+    own = Guard(guard.kind, guard.df + n_runs - 1, guard.confidence, guard.share)
+    reach = float(own.factor(np.array(1.0 / n_runs))) * (model.s or 0.0)
+    means = [
+        float(features(x) @ surface(model, problem.study, levels=levels, block=block).coefficients)
+        for block in judged_blocks(model, problem.study)
+    ]
+    if side.side == "high":
+        return max(means) + reach <= side.value
+    return min(means) - reach >= side.value

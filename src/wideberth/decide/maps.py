@@ -1,0 +1,98 @@
+"""Maps of two factors at a time through a setting, the others held there.
+
+With many factors only the pairs among the three that move the smallest margin (without limits
+the desirability) most over their explored range are drawn.
+"""
+
+from __future__ import annotations
+
+from itertools import combinations
+
+import numpy as np
+
+from wideberth.decide.arena import Arena
+from wideberth.decide.desirability import overall
+from wideberth.decide.judge import read_setting
+from wideberth.decide.problem import Problem, arena
+from wideberth.decide.records import Choice, FactorMap, LimitMap
+from wideberth.fit.records import surface
+from wideberth.quadratic.terms import features
+from wideberth.study.coding import to_actual
+from wideberth.study.records import FloatArray
+from wideberth.surface.explored import contains
+
+_N_GRID = 61
+_MOST_FACTORS = 3
+_BEYOND = 0.08
+
+
+def factor_maps(problem: Problem, choice: Choice) -> tuple[FactorMap, ...]:
+    """Draw the maps through the choice's setting; none without a setting or a numeric factor."""
+    study = problem.study
+    if choice.setpoint is None or not study.numeric:
+        return ()
+    levels, x = read_setting(study, choice.setpoint)
+    rows = arena(problem, levels, "simultaneous" if problem.possible else "means")
+    span = _spans(problem, x)
+    if len(study.numeric) == 1:
+        return (_map(problem, rows, x, 0, None, span),)
+    shown = sorted(_most_moving(rows, x, span)[:_MOST_FACTORS])
+    return tuple(_map(problem, rows, x, a, b, span) for a, b in combinations(shown, 2))
+
+
+def _spans(problem: Problem, x: FloatArray) -> FloatArray:
+    """Give the drawn ends of every factor, coded, a little beyond the region: (2, k)."""
+    k = len(x)
+    ends = np.stack([-problem.region.bounds[:k], problem.region.bounds[k : 2 * k]])
+    beyond = _BEYOND * (ends[1] - ends[0])
+    return np.stack([np.minimum(ends[0] - beyond, x), np.maximum(ends[1] + beyond, x)])
+
+
+def _most_moving(rows: Arena, x: FloatArray, span: FloatArray) -> list[int]:
+    moved = []
+    for j in range(len(x)):
+        line = np.tile(x, (_N_GRID, 1))
+        line[:, j] = np.linspace(span[0, j], span[1, j], _N_GRID)
+        moved.append(float(np.ptp(_merit(rows, line))))
+    return [int(j) for j in np.argsort(-np.array(moved), kind="stable")]
+
+
+def _merit(rows: Arena, x: FloatArray) -> FloatArray:
+    margins = [row.value(x) for row in rows.hard if row.limit is not None]
+    if margins:
+        smallest: FloatArray = np.min(margins, axis=0)
+        return smallest
+    return overall(rows.goals, features(x) @ rows.goal_means.T)
+
+
+def _map(
+    problem: Problem, rows: Arena, x: FloatArray, a: int, b: int | None, span: FloatArray
+) -> FactorMap:
+    study = problem.study
+    across = np.linspace(span[0, a], span[1, a], _N_GRID)
+    up = x[:1] if b is None else np.linspace(span[0, b], span[1, b], _N_GRID)
+    grid = np.tile(x, (len(up), len(across), 1))
+    grid[:, :, a] = across
+    if b is not None:
+        grid[:, :, b] = up[:, None]
+    actual, terms = to_actual(study.numeric, grid), features(grid)
+    means = {
+        model.response: terms @ surface(model, study, levels=rows.levels).coefficients
+        for model in problem.models.models
+    }
+    y = np.stack([means[goal.response] for goal in rows.goals], axis=-1) if rows.goals else None
+    margins = []
+    for limit in rows.limits:
+        side = problem.sides[limit]
+        worst = np.min([row.value(grid) for row in rows.hard if row.limit == limit], axis=0)
+        margins.append(LimitMap(side.response, side.side, side.value, worst))
+    return FactorMap(
+        across=study.numeric[a].name,
+        up="" if b is None else study.numeric[b].name,
+        across_actual=actual[0, :, a],
+        up_actual=np.zeros(1) if b is None else actual[:, 0, b],
+        means=means,
+        desirability=None if y is None else overall(rows.goals, y),
+        margins=tuple(margins),
+        explored=contains(problem.explored, grid),
+    )

@@ -1,0 +1,254 @@
+"""The step that names the setpoint, or says why none can be named.
+
+Guards are tried from the surest down: as stated (`met`), as for a setting fixed in advance
+(`provisional`), on the fitted means (`unproven`, else `conflict`). What is shown under a status
+other than `met` is never called a recommendation.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from wideberth.decide.aims import BEST, LEAST_POOR, NEAREST, SAFEST, Aim
+from wideberth.decide.confirmation import confirmation_runs
+from wideberth.decide.conflicts import can_hold, side_text, smallest_conflict
+from wideberth.decide.edges import edge_sentences
+from wideberth.decide.findings import choice_findings, rests_on_unusable
+from wideberth.decide.judge import (
+    constraint_verdicts,
+    factor_surroundings,
+    limit_verdicts,
+    overall_desirability,
+    own_setting,
+    predictions,
+    read_setting,
+)
+from wideberth.decide.problem import Mode, Problem, arena, build_problem
+from wideberth.decide.records import Bare, Choice, Conflict, LimitVerdict, Status
+from wideberth.decide.region import inside
+from wideberth.decide.search import Found, find_best, find_nearest
+from wideberth.decide.settable import on_steps, settable_grid
+from wideberth.errors import refusal
+from wideberth.fit.records import Models
+from wideberth.progress import Progress, silent
+from wideberth.study.records import Setting
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class _Answer:
+    """A setting found under one mode: free optimum and settable one, at one combination."""
+
+    levels: tuple[int, ...]
+    mode: Mode
+    free: Found
+    settable: Found
+    off_steps: bool = False
+
+
+def recommend(
+    models: Models,
+    *,
+    seed: int | None = None,
+    at: Setting | None = None,
+    room: bool = True,
+    progress: Progress = silent,
+) -> Choice:
+    """Name the best compromise of the goals inside all guarded limits, or judge a given setting.
+
+    Parameters
+    ----------
+    models : Models
+        What `fit` gave.
+    seed : int, optional
+        Of the simulated guard; the study's own by default.
+    at : Setting, optional
+        A setting of the person's own, own units, to be judged instead of searching.
+    room : bool
+        False asks for the bare optimum, without the room of the tolerances.
+    progress : Progress
+        Told how far the search is.
+
+    Returns
+    -------
+    Choice
+        Whose ``status`` says whether the setpoint is a recommendation.
+
+    Raises
+    ------
+    RefusedError
+        When the study states neither a goal nor a limit, when nothing is left to search, or when
+        the given setting cannot be read.
+    """
+    study = models.study
+    if not any(response.goal or response.limit for response in study.responses):
+        raise refusal(
+            "no response has a goal or a limit",
+            "study.toml",
+            "state what at least one response is wanted to be, or what it must not exceed",
+        )
+    chosen_seed = study.seed if seed is None else seed
+    progress("guards", 0.0)
+    problem = build_problem(models, seed=chosen_seed, room=room)
+    progress("search", 0.4)
+    choice = _judge_given(problem, at) if at is not None else _choose(problem)
+    progress("search", 1.0)
+    return replace(choice, seed=chosen_seed)
+
+
+def _choose(problem: Problem) -> Choice:
+    conflicts: tuple[Conflict, ...] = ()
+    answer = _best_answer(problem, "simultaneous") if problem.possible else None
+    if answer is not None:
+        status: Status = "met" if _reaches(answer) else "unreached"
+        return _describe(problem, answer, status, conflicts)
+    pointwise = _best_answer(problem, "pointwise") if problem.possible else None
+    if pointwise is not None:
+        return _describe(problem, pointwise, "provisional", conflicts)
+    status, mode = _why_not(problem)
+    if status == "conflict":
+        conflicts = (smallest_conflict(problem, mode),)
+    if not problem.possible and status == "unproven":
+        shown = _best_answer(problem, "means")
+        if shown is not None:
+            return _describe(problem, shown, status, conflicts)
+    return _describe(problem, _nearest_answer(problem, mode), status, conflicts)
+
+
+def _why_not(problem: Problem) -> tuple[Status, Mode]:
+    """Tell limits that cannot hold together from limits that these runs cannot prove."""
+    every = tuple(range(len(problem.sides)))
+    if not can_hold(problem, "means", every):
+        return "conflict", "means"
+    if not problem.possible:
+        return "unproven", "means"
+    provable = all(can_hold(problem, "pointwise", (limit,)) for limit in every)
+    return ("conflict" if provable else "unproven"), "pointwise"
+
+
+def _best_answer(problem: Problem, mode: Mode) -> _Answer | None:
+    """Find the best settable setting over all levels that holds every limit in this mode."""
+    grid = settable_grid(problem.study.numeric, problem.tight)
+    best: _Answer | None = None
+    for levels in problem.combinations:
+        rows = arena(problem, levels, mode)
+        free = find_best(rows)
+        if free is None:
+            continue
+        settable = on_steps(rows, grid, _aim(problem, free), free)
+        if settable is None:
+            continue
+        answer = _Answer(levels, mode, free, settable)
+        if best is None or _order(answer) > _order(best):
+            best = answer
+    return best
+
+
+def _nearest_answer(problem: Problem, mode: Mode) -> _Answer:
+    """Find the setting that breaks the limits least over all levels."""
+    grid = settable_grid(problem.study.numeric, problem.tight)
+    answers = []
+    for levels in problem.combinations:
+        rows = arena(problem, levels, mode)
+        free = find_nearest(rows)
+        settable = on_steps(rows, grid, NEAREST, free)
+        answers.append(_Answer(levels, mode, free, settable or free, settable is None))
+    return max(answers, key=lambda answer: answer.settable.score)
+
+
+def _aim(problem: Problem, free: Found) -> Aim:
+    if not problem.goals:
+        return SAFEST
+    return BEST if np.isfinite(free.score) else LEAST_POOR
+
+
+def _order(answer: _Answer) -> tuple[float, float]:
+    """Order answers by what the free optimum scores when settable, then by the worst margin."""
+    score = answer.settable.score if np.isfinite(answer.free.score) else -np.inf
+    return score, float(answer.settable.worst.min(initial=np.inf))
+
+
+def _reaches(answer: _Answer) -> bool:
+    return bool(np.isfinite(answer.free.score) and np.isfinite(answer.settable.score))
+
+
+def _judge_given(problem: Problem, at: Setting) -> Choice:
+    """Judge a setting of the person's own by the same ladder of guards."""
+    levels, x = read_setting(problem.study, at)
+    modes: tuple[Mode, ...] = ("simultaneous", "pointwise", "means")
+    statuses: tuple[Status, ...] = ("met", "provisional", "unproven")
+    status: Status = "conflict"
+    constraints = constraint_verdicts(problem, x)
+    for mode, reached in zip(modes, statuses, strict=True):
+        if mode != "means" and not problem.possible:
+            continue
+        verdicts = limit_verdicts(problem, arena(problem, levels, mode), x)
+        holds = all(v.met or (not problem.possible and mode == "means") for v in verdicts)
+        if holds and all(verdict.met for verdict in constraints):
+            status = reached
+            break
+    score = overall_desirability(problem, levels, x)
+    if status == "met" and score == 0.0:
+        status = "unreached"
+    if not inside(problem.region, x):
+        status = "unsupported"
+    found = Found(x, 0.0, np.zeros(0), (), np.zeros((0, len(x))))
+    return _describe(problem, _Answer(levels, "simultaneous", found, found), status, (), asked=True)
+
+
+def _describe(
+    problem: Problem,
+    answer: _Answer,
+    status: Status,
+    conflicts: tuple[Conflict, ...],
+    *,
+    asked: bool = False,
+) -> Choice:
+    study, levels, x = problem.study, answer.levels, answer.settable.x
+    stated: Mode = "simultaneous" if problem.possible else "means"
+    rows = arena(problem, levels, stated)
+    verdicts = limit_verdicts(problem, rows, x)
+    free = answer.free.x
+    if rests_on_unusable(problem):
+        status = "unsupported"
+    edge = () if asked else edge_sentences(study, rows, free)
+    return Choice(
+        status=status,
+        asked=asked,
+        seed=study.seed,
+        setpoint=own_setting(study, levels, x),
+        desirability=overall_desirability(problem, levels, x),
+        proof_gap=None,
+        unrounded=Bare(
+            setpoint=own_setting(study, levels, free),
+            desirability=overall_desirability(problem, levels, free),
+            proof_gap=None,
+        ),
+        goals=problem.goals,
+        predictions=predictions(problem, levels, x),
+        limits=verdicts,
+        constraints=constraint_verdicts(problem, x),
+        ruling=_ruling(verdicts),
+        factors=factor_surroundings(problem, x),
+        edge=edge,
+        conflicts=conflicts,
+        confirmation=confirmation_runs(problem, levels, x) if status == "provisional" else None,
+        findings=choice_findings(
+            problem,
+            levels,
+            x,
+            asked=asked,
+            equals=tuple(own_setting(study, levels, other) for other in answer.free.equals),
+            off_steps=answer.off_steps,
+        ),
+    )
+
+
+def _ruling(verdicts: tuple[LimitVerdict, ...]) -> str:
+    """Word the limit with the smallest margin."""
+    judged = [verdict for verdict in verdicts if verdict.margin is not None]
+    if not judged:
+        return ""
+    first = min(judged, key=lambda verdict: verdict.margin or 0.0)
+    return side_text(first.response, first.side, first.value, first.unit)

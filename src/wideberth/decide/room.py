@@ -1,0 +1,77 @@
+"""The worst place in the room of a setting: where the tolerances let a hard row fall lowest.
+
+A row without a guard is a quadratic, whose lowest value over a box is exact by faces. A guarded
+row is searched from the box's corners, faces and middle by shrinking coordinate moves.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from wideberth.decide.arena import Arena, HardRow
+from wideberth.decide.region import Room
+from wideberth.quadratic.box import extreme_over_box
+from wideberth.quadratic.stack import Stack
+from wideberth.study.records import FloatArray
+
+_REFINEMENTS = 14
+_MANY_PATTERNS = 6
+
+
+def worst_in_room(row: HardRow, room: Room, x: FloatArray) -> tuple[float, FloatArray]:
+    """Find the lowest value of a hard row over the room of one setting.
+
+    Parameters
+    ----------
+    x : ndarray, shape (k,)
+        Coded setting.
+
+    Returns
+    -------
+    (float, ndarray of shape (k,))
+        The value and the shift from the setting at which it is taken.
+    """
+    if room.is_empty:
+        return float(row.value(x)), np.zeros_like(x)
+    low, high = x - room.below, x + room.above
+    if row.guard is None:
+        curve = Stack.from_coefficients(row.curve, len(x))
+        value, at = extreme_over_box(curve, low, high, largest=False)
+        return float(value), at - x
+    points = _patterns(low, high, x)
+    for step in range(_REFINEMENTS):
+        points = _move_down(row, points, low, high, 0.5**step)
+    values = row.value(points)
+    lowest = int(values.argmin())
+    return float(values[lowest]), points[lowest] - x
+
+
+def worst_of_all(arena: Arena, x: FloatArray) -> tuple[FloatArray, list[FloatArray]]:
+    """Find each hard row's lowest value over the room of x: values (n_hard,) and their shifts."""
+    found = [worst_in_room(row, arena.room, x) for row in arena.hard]
+    return np.array([value for value, _ in found]), [shift for _, shift in found]
+
+
+def _patterns(low: FloatArray, high: FloatArray, x: FloatArray) -> FloatArray:
+    """Corners of the box and, for few factors, the middles of all its faces."""
+    loose = np.flatnonzero(high > low)
+    choices = [-1, 0, 1] if len(loose) <= _MANY_PATTERNS else [-1, 1]
+    grid = np.stack(np.meshgrid(*[choices] * len(loose), indexing="ij"), axis=-1)
+    signs = grid.reshape(-1, len(loose))
+    points = np.tile(x, (len(signs) + 1, 1))
+    ends = np.where(signs < 0, low[loose], np.where(signs > 0, high[loose], x[loose]))
+    points[:-1, loose] = ends
+    return points
+
+
+def _move_down(
+    row: HardRow, points: FloatArray, low: FloatArray, high: FloatArray, share: float
+) -> FloatArray:
+    for j in np.flatnonzero(high > low):
+        reach = share * (high[j] - low[j]) / 2
+        tried = np.repeat(points[:, None, :], 3, axis=1)
+        tried[:, 1, j] = np.maximum(points[:, j] - reach, low[j])
+        tried[:, 2, j] = np.minimum(points[:, j] + reach, high[j])
+        best = row.value(tried).argmin(axis=1)
+        points = tried[np.arange(len(points)), best]
+    return points
