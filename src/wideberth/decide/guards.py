@@ -52,10 +52,9 @@ class Guard:
         if self.kind == "none":
             return np.zeros_like(h)
         if self.kind == "share":
-            factor: FloatArray = tolerance_factor(h, self.df, self.share, self.confidence)
-            return factor
+            return tolerance_factor(h, self.df, self.share, self.confidence)
         t = float(stdtrit(self.df, self.confidence))
-        factor = t * np.sqrt(h if self.kind == "mean" else 1.0 + h)
+        factor: FloatArray = t * np.sqrt(h if self.kind == "mean" else 1.0 + h)
         return factor
 
     def extra(self, normal: FloatArray) -> FloatArray:

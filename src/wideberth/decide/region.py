@@ -118,15 +118,14 @@ def search_region(study: Study, explored: Explored) -> Region:
         centre = np.zeros(k)
         radius = study.region.radius
         shape = np.zeros((k, k)) if radius is None else np.eye(k) / radius**2
-    weights, bounds, names = explored.halfspaces
     factor_names = [factor.name for factor in study.numeric]
     region = Region(
-        planes=np.concatenate([-np.eye(k), np.eye(k), weights.reshape(-1, k)]),
-        bounds=np.concatenate([-low, high, bounds]),
+        planes=np.concatenate([-np.eye(k), np.eye(k), explored.planes]),
+        bounds=np.concatenate([-low, high, explored.bounds]),
         names=(
             *(f"low of {name}" for name in factor_names),
             *(f"high of {name}" for name in factor_names),
-            *names,
+            *explored.names,
         ),
         centre=centre,
         shape=shape,
@@ -196,8 +195,9 @@ def _even_points(n: int, dimension: int) -> FloatArray:
     ratio = 2.0
     for _ in range(64):
         ratio = (1.0 + ratio) ** (1.0 / (dimension + 1))
-    steps = (1.0 / ratio) ** np.arange(1, dimension + 1)
-    points: FloatArray = (0.5 + np.outer(np.arange(1, n + 1), steps)) % 1.0
+    steps: FloatArray = np.power(1.0 / ratio, np.arange(1, dimension + 1, dtype=np.float64))
+    counts = np.arange(1, n + 1, dtype=np.float64)
+    points: FloatArray = np.asarray(np.mod(0.5 + np.outer(counts, steps), 1.0))
     return points
 
 

@@ -1,0 +1,314 @@
+"""The step that fits every response of a study.
+
+A stated order that the runs cannot support is refused; the default falls back to what can be told
+apart, and says so.
+"""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+from scipy.special import stdtr
+
+from wideberth.errors import Fault, RefusedError
+from wideberth.fit.columns import (
+    degree,
+    in_printed_order,
+    model_matrix,
+    model_terms,
+    product_factors,
+)
+from wideberth.fit.findings import findings_of, worst_grade
+from wideberth.fit.lack_of_fit import lack_of_fit, replicate_groups
+from wideberth.fit.least_squares import (
+    LeastSquares,
+    aliased_with,
+    cook_distance,
+    independent_columns,
+    is_noise_free,
+    least_squares,
+    press,
+    studentized,
+)
+from wideberth.fit.records import FittedTerm, Model, Models, RunDiagnosis, Term
+from wideberth.quadratic.terms import n_terms, pairs, term_names
+from wideberth.study.records import Finding, FloatArray, IntArray, Response, Study
+
+
+def fit(study: Study) -> Models:
+    """Fit all responses, in the study's order.
+
+    Raises
+    ------
+    RefusedError
+        When a stated order cannot be supported by the runs; all such responses at once.
+    """
+    models: list[Model] = []
+    faults: list[Fault] = []
+    for response in study.responses:
+        if response.formula is not None:
+            models.append(_exact_model(study, response))
+            continue
+        fault = _unsupported_order(study, response)
+        if fault is not None:
+            faults.append(fault)
+        else:
+            models.append(_fitted_model(study, response))
+    if faults:
+        raise RefusedError(faults)
+    return Models(study, tuple(models))
+
+
+def rows_fitted(study: Study, response: Response) -> IntArray:
+    """Give the indices of the runs that a measured response is fitted to."""
+    column = study.measured.index(response)
+    present = study.runs.fitted & np.isfinite(study.runs.measured[:, column])
+    rows: IntArray = np.flatnonzero(present).astype(np.int64)
+    return rows
+
+
+def _unsupported_order(study: Study, response: Response) -> Fault | None:
+    if response.order is None:
+        return None
+    rows = rows_fitted(study, response)
+    terms = model_terms(study, response.order, study.runs.block[rows])
+    matrix = model_matrix(study, terms, rows)
+    kept = independent_columns(matrix)
+    lost = [i for i in range(len(terms)) if i not in kept]
+    if not lost:
+        return None
+    sets = [_alias_names(matrix, terms, kept, column) for column in lost]
+    return Fault(
+        f"{response.name}: a model of order {response.order} has terms that {len(rows)} runs"
+        f" cannot tell apart: {'; '.join(sets)}",
+        f"study.toml, responses.{response.name}.model.order",
+        "leave the order out to fit what can be told apart, lower it, or add runs",
+    )
+
+
+def _alias_names(matrix: FloatArray, terms: tuple[Term, ...], kept: list[int], column: int) -> str:
+    others = aliased_with(matrix, column, [i for i in kept if i < column] or kept)
+    return " and ".join([terms[column].name, *(terms[i].name for i in others)][:6])
+
+
+def _supported_terms(
+    study: Study, response: Response, rows: IntArray
+) -> tuple[tuple[Term, ...], tuple[Finding, ...]]:
+    """Choose the terms of the default model: all that the runs can tell apart."""
+    terms, found = _moving_terms(study, response, rows)
+    while True:
+        matrix = model_matrix(study, terms, rows)
+        kept = independent_columns(matrix)
+        lost = [i for i in range(len(terms)) if i not in kept]
+        if not lost:
+            break
+        column = lost[0]
+        group = [column, *aliased_with(matrix, column, [i for i in kept if i < column])]
+        degrees = {i: degree(terms[i], len(study.numeric)) for i in group}
+        highest = max(degrees.values())
+        dropped = [i for i in group if degrees[i] == highest]
+        names = ", ".join(terms[i].name for i in dropped)
+        text = f"{response.name}: the runs cannot tell apart {names}"
+        rest = [terms[i].name for i in group if i not in dropped]
+        text += f" from {', '.join(rest)}" if rest else ""
+        found.append(Finding("look", f"{text}; left out of the model.", response.name))
+        terms = tuple(term for i, term in enumerate(terms) if i not in dropped)
+    return terms, tuple(found)
+
+
+def _moving_terms(
+    study: Study, response: Response, rows: IntArray
+) -> tuple[tuple[Term, ...], list[Finding]]:
+    """Leave out factors that never moved or only moved together with others."""
+    terms = model_terms(study, 2, study.runs.block[rows])
+    k = len(study.numeric)
+    plain = [i for i, t in enumerate(terms) if degree(t, k) <= 1 and t.contrast is None]
+    matrix = model_matrix(study, terms, rows)[:, plain]
+    kept = independent_columns(matrix)
+    found, still = [], set()
+    for place, i in enumerate(plain):
+        if place in kept or terms[i].block is not None or terms[i].monomial == 0:
+            continue
+        others = aliased_with(matrix, place, [p for p in kept if p < place])
+        names = [terms[plain[p]].name for p in others if terms[plain[p]].name != "1"]
+        together = f"moved together with {', '.join(names)}" if names else "never moved"
+        with_block = any(terms[plain[p]].block is not None for p in others)
+        found.append(
+            Finding(
+                "do not use" if with_block else "look",
+                f"{response.name}: {terms[i].name} {together}; its own effect is not known.",
+                response.name,
+            )
+        )
+        still.add(terms[i].monomial - 1)
+    terms = tuple(t for t in terms if not still & set(product_factors(t.monomial, k)))
+    return terms, found
+
+
+def _fitted_model(study: Study, response: Response) -> Model:
+    rows = rows_fitted(study, response)
+    if response.order is None:
+        terms, found = _supported_terms(study, response, rows)
+    else:
+        terms, found = model_terms(study, response.order, study.runs.block[rows]), ()
+    terms = tuple(terms[i] for i in in_printed_order(terms))
+    y = study.runs.measured[rows, study.measured.index(response)]
+    fitted = least_squares(model_matrix(study, terms, rows), y)
+    noise_free = fitted.df > 0 and is_noise_free(fitted, y)
+    reasons: dict[str, str] = {}
+    s = None
+    if fitted.df > 0:
+        s = 0.0 if noise_free else float(np.sqrt(fitted.rss / fitted.df))
+    else:
+        reasons["s"] = "there are as many terms as runs, so nothing is left to estimate the noise"
+    lack, why = (
+        (None, "the model describes the runs exactly")
+        if noise_free
+        else lack_of_fit(fitted, y, replicate_groups(study, rows))
+    )
+    if lack is None:
+        reasons["lack_of_fit"] = why
+    total = float(((y - y.mean()) ** 2).sum())
+    constant = float(np.ptp(y)) <= 1e-12 * float(np.abs(y).max(initial=0.0))
+    r2, adjusted, press_value, r2_press = _quality(fitted, total, constant, reasons)
+    model = Model(
+        response=response.name,
+        unit=response.unit,
+        exact=False,
+        order=max(degree(term, len(study.numeric)) for term in terms),
+        terms=terms,
+        coefficients=fitted.coefficients,
+        covariance=fitted.covariance,
+        table=_table(terms, fitted, s),
+        n_runs=len(rows),
+        df_residual=fitted.df,
+        s=s,
+        r2=r2,
+        r2_adjusted=adjusted,
+        press=press_value,
+        r2_press=r2_press,
+        lack_of_fit=lack,
+        runs=_runs(study, rows, y, fitted, noise_free),
+        noise_free=noise_free,
+        findings=found,
+        grade="fine",
+        reasons=reasons,
+    )
+    return _graded(model, response, y)
+
+
+def _graded(model: Model, response: Response, y: FloatArray) -> Model:
+    findings = (*model.findings, *findings_of(model, response, y))
+    return replace(model, findings=findings, grade=worst_grade(findings))
+
+
+def _quality(
+    fitted: LeastSquares, total: float, constant: bool, reasons: dict[str, str]
+) -> tuple[float | None, float | None, float | None, float | None]:
+    """Give R2, adjusted R2, PRESS and PRESS R2, with the reason for each that is missing."""
+    n = len(fitted.residuals)
+    if constant:
+        for name in ("r2", "r2_adjusted", "press", "r2_press"):
+            reasons[name] = "all measured values are the same"
+        return None, None, None, None
+    r2 = 1.0 - fitted.rss / total
+    adjusted = 1.0 - (fitted.rss / fitted.df) / (total / (n - 1)) if fitted.df > 0 else None
+    if adjusted is None:
+        reasons["r2_adjusted"] = "no residual degrees of freedom are left"
+    value = press(fitted)
+    if value is None:
+        reasons["press"] = reasons["r2_press"] = (
+            "at least one run has leverage 1: the model cannot be fitted without it"
+        )
+    return r2, adjusted, value, None if value is None else 1.0 - value / total
+
+
+def _table(
+    terms: tuple[Term, ...], fitted: LeastSquares, s: float | None
+) -> tuple[FittedTerm, ...]:
+    rows = []
+    for i, term in enumerate(terms):
+        value = float(fitted.coefficients[i])
+        if not s:
+            rows.append(FittedTerm(term.name, value, None, None, None))
+            continue
+        se = s * float(np.sqrt(fitted.covariance[i, i]))
+        t = value / se
+        rows.append(FittedTerm(term.name, value, se, t, float(2 * stdtr(fitted.df, -abs(t)))))
+    return tuple(rows)
+
+
+def _runs(
+    study: Study, rows: IntArray, y: FloatArray, fitted: LeastSquares, noise_free: bool
+) -> tuple[RunDiagnosis, ...]:
+    outer, cook = studentized(fitted), cook_distance(fitted)
+    known = not noise_free
+    return tuple(
+        RunDiagnosis(
+            row=study.runs.rows[row],
+            observed=float(y[i]),
+            fitted=float(fitted.fitted[i]),
+            residual=float(fitted.residuals[i]),
+            leverage=float(fitted.leverage[i]),
+            studentized=float(outer[i]) if known and np.isfinite(outer[i]) else None,
+            cook=float(cook[i]) if known and np.isfinite(cook[i]) else None,
+        )
+        for i, row in enumerate(rows)
+    )
+
+
+def _exact_model(study: Study, response: Response) -> Model:
+    """Turn a formula in own units into coded coefficients, exactly."""
+    names = tuple(factor.name for factor in study.numeric)
+    k = len(names)
+    middle = np.array([(f.low + f.high) / 2 for f in study.numeric])
+    half = np.array([(f.high - f.low) / 2 for f in study.numeric])
+    beta = np.zeros(n_terms(k))
+    first, second = pairs(k)
+    product_place = {
+        (a, b): 1 + 2 * k + i for i, (a, b) in enumerate(zip(first, second, strict=True))
+    }
+    formula = response.formula
+    for factors, number in (formula.terms if formula else {}).items():
+        places = sorted(names.index(name) for name in factors)
+        if not places:
+            beta[0] += number
+        elif len(places) == 1:
+            (j,) = places
+            beta[0] += number * middle[j]
+            beta[1 + j] += number * half[j]
+        else:
+            a, b = places
+            beta[0] += number * middle[a] * middle[b]
+            beta[1 + a] += number * half[a] * middle[b]
+            beta[1 + b] += number * half[b] * middle[a]
+            place = 1 + k + a if a == b else product_place[(a, b)]
+            beta[place] += number * half[a] * half[b]
+    terms = tuple(Term(name, place) for place, name in enumerate(term_names(names)))
+    reason = "known exactly by its formula"
+    return Model(
+        response=response.name,
+        unit=response.unit,
+        exact=True,
+        order=2,
+        terms=terms,
+        coefficients=beta,
+        covariance=np.zeros((len(beta), len(beta))),
+        table=tuple(
+            FittedTerm(t.name, float(b), None, None, None) for t, b in zip(terms, beta, strict=True)
+        ),
+        n_runs=0,
+        df_residual=0,
+        s=0.0,
+        r2=None,
+        r2_adjusted=None,
+        press=None,
+        r2_press=None,
+        lack_of_fit=None,
+        runs=(),
+        noise_free=False,
+        findings=(Finding("fine", f"{response.name} is {reason}.", response.name),),
+        grade="fine",
+        reasons=dict.fromkeys(("r2", "r2_adjusted", "press", "r2_press", "lack_of_fit"), reason),
+    )

@@ -1,0 +1,73 @@
+"""Extreme values of a quadratic over a box of settings, exactly, by its faces.
+
+A smallest value over a box lies on some face, in the inside of which the quadratic is stationary
+and curved upwards. Every face is tried; faces whose curvature cannot hold a minimum are dropped.
+"""
+
+from __future__ import annotations
+
+from itertools import combinations
+
+import numpy as np
+
+from wideberth.quadratic.stack import Stack
+from wideberth.quadratic.terms import FloatArray, IntArray
+
+
+def extreme_over_box(
+    stack: Stack, low: FloatArray, high: FloatArray, *, largest: bool
+) -> tuple[float, FloatArray]:
+    """Find the largest or smallest value of one quadratic over a box.
+
+    Parameters
+    ----------
+    stack : Stack
+        One quadratic, no leading axes, k factors.
+    low, high : ndarray, shape (k,)
+        Coded ends; equal ends fix a factor.
+    largest : bool
+        True for the largest value.
+
+    Returns
+    -------
+    (float, ndarray of shape (k,))
+        The value and a setting where it is taken.
+    """
+    sign = -1.0 if largest else 1.0
+    turned = Stack(sign * stack.const, sign * stack.lin, sign * stack.quad)
+    loose = np.flatnonzero(high > low)
+    best, where = np.inf, low.copy()
+    for n_free in range(len(loose) + 1):
+        for free in combinations(loose.tolist(), n_free):
+            for x in _stationary_on_faces(turned, low, high, np.array(free, dtype=int), loose):
+                value = float(turned.value(x))
+                if value < best:
+                    best, where = value, x
+    return sign * best, where
+
+
+def _stationary_on_faces(
+    stack: Stack, low: FloatArray, high: FloatArray, free: IntArray, loose: IntArray
+) -> FloatArray:
+    """Give the stationary points inside all faces with these free factors: (n, k), best only."""
+    held = np.setdiff1d(loose, free)
+    curvature = stack.quad[np.ix_(free, free)]
+    if len(free) and np.linalg.eigvalsh(curvature)[0] <= 0.0:
+        return np.zeros((0, len(low)))
+    corners = _corners(len(held))
+    x = np.tile(low, (len(corners), 1))
+    x[:, held] = np.where(corners, high[held], low[held])
+    if len(free):
+        x[:, free] = 0.0
+        slope = stack.lin[free] + 2 * x @ stack.quad[:, free]
+        x[:, free] = np.linalg.solve(curvature, -slope.T / 2).T
+        kept = ((x[:, free] >= low[free]) & (x[:, free] <= high[free])).all(axis=1)
+        x = x[kept]
+    if not len(x):
+        return x
+    return x[[int(stack.value(x).argmin())]]
+
+
+def _corners(n: int) -> FloatArray:
+    grid: FloatArray = np.stack(np.meshgrid(*[[False, True]] * n, indexing="ij"), axis=-1)
+    return grid.reshape(-1, n)

@@ -1,0 +1,368 @@
+"""What ``study.toml`` says, checked against itself, and turned into records."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
+from decimal import Decimal
+
+from wideberth.errors import Fault
+from wideberth.study.lines import KeyPath
+from wideberth.study.naming import name_faults, nearest
+from wideberth.study.records import (
+    CategoricalFactor,
+    Factor,
+    Formula,
+    Goal,
+    Limit,
+    NumericFactor,
+    Response,
+)
+from wideberth.study.schema import (
+    FactorTable,
+    GoalTable,
+    LimitTable,
+    ResponseTable,
+    StudyFile,
+    place,
+)
+from wideberth.study.sheet import SheetContent
+
+STUDY_FILE = "study.toml"
+
+
+@dataclass(frozen=True, slots=True)
+class Statement:
+    """The parsed tables with the lines they stand on."""
+
+    tables: StudyFile
+    lines: Mapping[KeyPath, int]
+
+    def at(self, *path: str | int) -> str:
+        """Say where a key path stands."""
+        return place(path, self.lines)
+
+    def faults(self) -> Iterator[Fault]:
+        """Check what the tables say against each other; the sheet is checked elsewhere."""
+        if not self.tables.factors:
+            yield Fault("no factor is stated", STUDY_FILE, "add a table [factors.NAME]")
+        if not self.tables.responses:
+            yield Fault("no response is stated", STUDY_FILE, "add a table [responses.NAME]")
+        yield from name_faults(self.tables.factors, self.tables.responses, self.at)
+        for name, factor in self.tables.factors.items():
+            yield from self._factor_faults(name, factor)
+        for name, response in self.tables.responses.items():
+            yield from self._response_faults(name, response)
+        yield from self._constraint_faults()
+        yield from self._today_faults()
+
+    def _factor_faults(self, name: str, table: FactorTable) -> Iterator[Fault]:
+        where = self.at("factors", name)
+        if table.levels is not None:
+            yield from self._level_faults(name, table, table.levels)
+            return
+        for key in ("unit", "low", "high"):
+            if getattr(table, key) is None:
+                yield Fault(f"{name} has no {key}", where, f"state {key}, or levels instead")
+        if table.low is None or table.high is None:
+            return
+        if table.low >= table.high:
+            yield Fault(f"low {table.low:g} is not below high {table.high:g}", where, "swap them")
+        if table.scale == "log":
+            yield from self._log_faults(name, table)
+        yield from self._allowed_faults(name, table)
+
+    def _level_faults(self, name: str, table: FactorTable, levels: list[str]) -> Iterator[Fault]:
+        where = self.at("factors", name)
+        stated = [
+            k
+            for k in ("low", "high", "allowed", "tolerance", "settable_step")
+            if getattr(table, k) is not None
+        ]
+        if stated:
+            yield Fault(
+                f"{name} has levels and also {', '.join(stated)}",
+                where,
+                "a factor has either levels or low and high",
+            )
+        if len(set(levels)) < len(levels):
+            yield Fault(f"{name} names a level twice", where, "name each level once")
+
+    def _allowed_faults(self, name: str, table: FactorTable) -> Iterator[Fault]:
+        if table.allowed is not None and table.allowed[0] >= table.allowed[1]:
+            yield Fault(
+                f"allowed runs from {table.allowed[0]:g} to {table.allowed[1]:g}",
+                self.at("factors", name, "allowed"),
+                "write the smaller number first",
+            )
+        elif table.allowed is not None and table.settable_step is not None:
+            step = Decimal(repr(table.settable_step))
+            first, last = (Decimal(repr(end)) / step for end in table.allowed)
+            if last.to_integral_value("ROUND_FLOOR") < first.to_integral_value("ROUND_CEILING"):
+                yield Fault(
+                    f"no whole multiple of the step {table.settable_step:g} is allowed",
+                    self.at("factors", name, "settable_step"),
+                    "make the step smaller or widen allowed",
+                )
+
+    def _log_faults(self, name: str, table: FactorTable) -> Iterator[Fault]:
+        where = self.at("factors", name)
+        ends = [table.low, *(table.allowed or [])]
+        if any(end is not None and end <= 0 for end in ends):
+            yield Fault(
+                f"{name} is on a log scale but reaches 0 or less", where, "use values above 0"
+            )
+        if table.tolerance is not None and table.tolerance >= 1:
+            yield Fault(
+                f"the tolerance of {name} is {table.tolerance:g}",
+                self.at("factors", name, "tolerance"),
+                "on a log scale it is relative: 0.05 means 5 %",
+            )
+
+    def _response_faults(self, name: str, table: ResponseTable) -> Iterator[Fault]:
+        if table.limit is not None:
+            yield from self._limit_faults(name, table.limit, exact=table.formula is not None)
+        if table.goal is not None:
+            yield from self._goal_faults(name, table.goal)
+        if table.formula is None:
+            return
+        where = self.at("responses", name, "formula")
+        if not table.formula:
+            yield Fault("the formula is empty", where, "state at least one term")
+        if table.model is not None:
+            yield Fault(
+                f"{name} has a formula and a model", where, "an exact response is not fitted"
+            )
+        for term in table.formula:
+            yield from self._term_faults(name, term)
+
+    def _term_faults(self, name: str, term: str) -> Iterator[Fault]:
+        where = self.at("responses", name, "formula", term)
+        names = _term_factors(term)
+        if len(names) > 2:
+            yield Fault(f"the term {term} is of degree {len(names)}", where, "use degree 2 at most")
+        for factor in names:
+            table = self.tables.factors.get(factor)
+            if table is None:
+                yield Fault(
+                    f"the term {term} names no factor of the study: {factor}",
+                    where,
+                    nearest(factor, self._numeric_names(), "use the names of numeric factors"),
+                )
+            elif table.levels is not None or table.scale == "log":
+                kind = "has levels" if table.levels is not None else "is on a log scale"
+                yield Fault(f"{factor} {kind} and cannot stand in a formula", where, "leave it out")
+
+    def _numeric_names(self) -> list[str]:
+        return [name for name, table in self.tables.factors.items() if table.levels is None]
+
+    def _limit_faults(self, name: str, table: LimitTable, *, exact: bool) -> Iterator[Fault]:
+        where = self.at("responses", name, "limit")
+        if table.low is None and table.high is None:
+            yield Fault(f"the limit of {name} has neither low nor high", where, "state one")
+        elif table.low is not None and table.high is not None and table.low >= table.high:
+            yield Fault(
+                f"the limit of {name} runs from {table.low:g} to {table.high:g}",
+                where,
+                "low must lie below high",
+            )
+        if exact and table.guard not in (None, "none"):
+            yield Fault(
+                f"{name} is known exactly but guarded by '{table.guard}'",
+                where,
+                "leave guard out: there is no noise to guard against",
+            )
+
+    def _goal_faults(self, name: str, table: GoalTable) -> Iterator[Fault]:
+        where = self.at("responses", name, "goal")
+        poor, ideal = _numbers(table.poor), _numbers(table.ideal)
+        if table.want == "near":
+            yield from self._near_faults(name, poor, ideal)
+            return
+        for key, numbers in (("poor", poor), ("ideal", ideal)):
+            if numbers is not None and len(numbers) != 1:
+                yield Fault(
+                    f"{key} of {name} holds two numbers", where, f"want = '{table.want}' takes one"
+                )
+                return
+        if isinstance(table.exponent, list):
+            yield Fault(
+                f"exponent of {name} holds two numbers", where, "only want = 'near' has two sides"
+            )
+        if poor and ideal and (ideal[0] <= poor[0]) == (table.want == "more"):
+            yield Fault(
+                f"{name} is wanted {table.want}, but ideal {ideal[0]:g} is not"
+                f" {'above' if table.want == 'more' else 'below'} poor {poor[0]:g}",
+                where,
+                "swap poor and ideal, or change want",
+            )
+
+    def _near_faults(
+        self, name: str, poor: tuple[float, ...] | None, ideal: tuple[float, ...] | None
+    ) -> Iterator[Fault]:
+        where = self.at("responses", name, "goal")
+        if ideal is None:
+            yield Fault(f"{name} is wanted near, but no ideal is stated", where, "state ideal")
+            return
+        if poor is not None and len(poor) != 2:
+            yield Fault(f"poor of {name} is one number", where, "write poor = [lower, upper]")
+            return
+        ends = (poor[0] if poor else float("-inf"), poor[1] if poor else float("inf"))
+        if not ends[0] < ideal[0] <= ideal[-1] < ends[1]:
+            yield Fault(
+                f"poor and ideal of {name} are not in order",
+                where,
+                "they must rise: poor low, ideal, poor high",
+            )
+
+    def _constraint_faults(self) -> Iterator[Fault]:
+        for i, table in enumerate(self.tables.constraints):
+            where = self.at("constraints", i)
+            if table.at_most is None and table.at_least is None:
+                yield Fault(
+                    f"constraint {table.name} bounds nothing", where, "state at_most or at_least"
+                )
+            elif (
+                table.at_most is not None
+                and table.at_least is not None
+                and table.at_least > table.at_most
+            ):
+                yield Fault(
+                    f"constraint {table.name} asks for at least {table.at_least:g} and at most"
+                    f" {table.at_most:g}",
+                    where,
+                    "swap the two",
+                )
+            for name in table.sum:
+                factor = self.tables.factors.get(name)
+                if factor is None or factor.levels is not None:
+                    yield Fault(
+                        f"constraint {table.name} names no numeric factor: {name}",
+                        self.at("constraints", i, "sum", name),
+                        nearest(name, self._numeric_names(), "use the names of numeric factors"),
+                    )
+                elif factor.scale == "log":
+                    yield Fault(
+                        f"constraint {table.name} uses {name}, which is on a log scale",
+                        where,
+                        "constraints take factors on a linear scale",
+                    )
+
+    def _today_faults(self) -> Iterator[Fault]:
+        for name, value in self.tables.today.items():
+            where = self.at("today", name)
+            factor = self.tables.factors.get(name)
+            if factor is None:
+                yield Fault(
+                    f"[today] names no factor: {name}",
+                    where,
+                    nearest(name, list(self.tables.factors), "use the names of factors"),
+                )
+            elif factor.levels is not None and value not in factor.levels:
+                yield Fault(
+                    f"{name} has no level {value}", where, f"use {', '.join(factor.levels)}"
+                )
+            elif factor.levels is None and isinstance(value, str):
+                yield Fault(f"{name} is '{value}'", where, "give a number without quotes")
+
+    def block_faults(self, sheet: SheetContent) -> Iterator[Fault]:
+        """Check ``[blocks]`` against the sheet."""
+        if sheet.runs is None:
+            return
+        blocks, stated = sheet.runs.blocks, self.tables.blocks
+        if len(blocks) > 1 and stated is None:
+            yield Fault(
+                f"the sheet has blocks ({', '.join(blocks)}), but [blocks] is not stated",
+                STUDY_FILE,
+                "state future = 'recur' if the same blocks come again",
+            )
+        if stated is not None and stated.future == "sample":
+            yield Fault(
+                "blocks that are a sample of days or lots are not served yet",
+                self.at("blocks", "future"),
+                "use 'recur' only if the same blocks, say two reactors, come again",
+            )
+        if stated is not None and not blocks:
+            yield Fault(
+                "[blocks] is stated, but the sheet has no block column",
+                self.at("blocks"),
+                "add a column block, or take the table out",
+            )
+
+    def factors(self) -> tuple[Factor, ...]:
+        """Give the factors as records, in the order stated."""
+        return tuple(_factor(name, table) for name, table in self.tables.factors.items())
+
+    def responses(self) -> tuple[Response, ...]:
+        """Give the responses as records, in the order stated."""
+        return tuple(_response(name, table) for name, table in self.tables.responses.items())
+
+
+def _factor(name: str, table: FactorTable) -> Factor:
+    if table.levels is not None:
+        return CategoricalFactor(name, table.unit or "", tuple(table.levels))
+    step = table.settable_step
+    return NumericFactor(
+        name=name,
+        unit=table.unit or "",
+        low=0.0 if table.low is None else table.low,
+        high=1.0 if table.high is None else table.high,
+        allowed=None if table.allowed is None else (table.allowed[0], table.allowed[1]),
+        tolerance=table.tolerance,
+        settable_step=None if step is None else Decimal(repr(step)),
+        scale=table.scale,
+    )
+
+
+def _response(name: str, table: ResponseTable) -> Response:
+    return Response(
+        name=name,
+        unit=table.unit,
+        goal=None if table.goal is None else _goal(table.goal),
+        limit=None if table.limit is None else _limit(table.limit, exact=table.formula is not None),
+        order=table.model.order if table.model else None,
+        formula=None if table.formula is None else _formula(table.formula),
+    )
+
+
+def _goal(table: GoalTable) -> Goal:
+    ideal = _numbers(table.ideal)
+    if table.want == "near" and ideal is not None and len(ideal) == 1:
+        ideal = (ideal[0], ideal[0])
+    exponent = _numbers(table.exponent) or (1.0,)
+    return Goal(
+        want=table.want,
+        poor=_numbers(table.poor),
+        ideal=ideal,
+        exponent=(exponent[0], exponent[-1]),
+        priority=table.priority,
+    )
+
+
+def _limit(table: LimitTable, *, exact: bool) -> Limit:
+    guard = table.guard or ("none" if exact else "batch")
+    return Limit(table.low, table.high, guard, table.confidence, table.share, table.point)
+
+
+def _formula(table: Mapping[str, float]) -> Formula:
+    terms: dict[tuple[str, ...], float] = {}
+    for term, number in table.items():
+        names = tuple(sorted(_term_factors(term)))
+        terms[names] = terms.get(names, 0.0) + number
+    return Formula(terms)
+
+
+def _term_factors(term: str) -> list[str]:
+    """Split ``constant``, ``a``, ``a^2``, ``a*b`` into the factors it multiplies."""
+    names: list[str] = []
+    for part in (piece.strip() for piece in term.split("*")):
+        base, caret, power = part.partition("^")
+        count = int(power) if caret and power.strip().isdigit() and int(power) < 9 else 1
+        names += [base.strip() if caret and count > 1 else part] * count
+    return [] if names == ["constant"] else names
+
+
+def _numbers(value: float | list[float] | None) -> tuple[float, ...] | None:
+    if value is None:
+        return None
+    return tuple(value) if isinstance(value, list) else (value,)
