@@ -55,7 +55,7 @@ class HardRow:
         if self.guard is None:
             return value
         leverage = np.einsum("...p,...p->...", terms @ self.covariance, terms)
-        return value - self.weight * self.guard.derivatives(leverage)[0]
+        return value - self.weight * self.guard.value(leverage)
 
 
 @dataclass(frozen=True, slots=True)

@@ -76,6 +76,8 @@ class SmoothGuard:
     low: float
     high: float
     curve: Chebyshev
+    slope: Chebyshev
+    bend: Chebyshev
 
     @classmethod
     def between(cls, guard: Guard, least: float, largest: float) -> SmoothGuard:
@@ -84,14 +86,23 @@ class SmoothGuard:
         curve = Chebyshev.interpolate(
             lambda root: guard.factor(root * root), _DEGREE, domain=[low, high]
         )
-        return cls(guard, float(low), float(high), curve)
+        return cls(guard, float(low), float(high), curve, curve.deriv(1), curve.deriv(2))
+
+    def value(self, leverage: FloatArray) -> FloatArray:
+        """Give K at leverages h, of h's shape."""
+        root = np.sqrt(np.maximum(leverage, 1e-12))
+        inside = np.clip(root, self.low, self.high)
+        factor: FloatArray = self.curve(inside)
+        if (inside != root).any():
+            factor = factor + self.slope(inside) * (root - inside)
+        return factor
 
     def derivatives(self, leverage: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
         """Give K, dK/dh and d2K/dh2 at leverages h, each of h's shape."""
         root = np.sqrt(np.maximum(leverage, 1e-12))
         inside = np.clip(root, self.low, self.high)
-        first = self.curve.deriv(1)(inside)
-        second = np.where(inside == root, self.curve.deriv(2)(inside), 0.0)
+        first = self.slope(inside)
+        second = np.where(inside == root, self.bend(inside), 0.0)
         value = self.curve(inside) + first * (root - inside)
         # chain rule from v = sqrt(h): v' = 1/(2v), v'' = -1/(4 v^3)
         return value, first / (2 * root), second / (4 * root**2) - first / (4 * root**3)

@@ -74,7 +74,7 @@ def row_values(program: Program, x: FloatArray) -> FloatArray:
     values: FloatArray = program.curves.coefficients() @ terms.T
     for part in program.guards:
         leverage = np.einsum("np,np->n", terms @ part.covariance, terms)
-        values[part.row] -= part.weight * part.guard.derivatives(leverage)[0]
+        values[part.row] -= part.weight * part.guard.value(leverage)
     return values
 
 

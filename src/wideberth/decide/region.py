@@ -197,8 +197,8 @@ def _even_points(n: int, dimension: int) -> FloatArray:
         ratio = (1.0 + ratio) ** (1.0 / (dimension + 1))
     steps: FloatArray = np.power(1.0 / ratio, np.arange(1, dimension + 1, dtype=np.float64))
     counts = np.arange(1, n + 1, dtype=np.float64)
-    points: FloatArray = np.asarray(np.mod(0.5 + np.outer(counts, steps), 1.0))
-    return points
+    spread: FloatArray = 0.5 + counts[:, None] * steps
+    return spread - np.floor(spread)
 
 
 def _sign_rays(r: int) -> FloatArray:

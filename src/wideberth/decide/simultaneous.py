@@ -79,7 +79,7 @@ def simultaneous_factor(
     for i, mapped in enumerate(maps):
         rows = terms @ mapped
         leverage = np.einsum("nq,nq->n", rows @ covariance, rows)
-        factor = smooth.derivatives(leverage)[0]
+        factor = smooth.value(leverage)
         ratio = (rows @ draws.deviations.T + draws.extra) / factor[:, None]
         best = ratio.argmax(axis=0)
         value = ratio[best, np.arange(N_DRAWS)]
@@ -127,7 +127,7 @@ def _polish(
         leverage = np.einsum("...p,...p->...", terms @ spread_covariance, terms)
         top = np.einsum("n...p,np->n...", terms, pulled)
         top += draws.extra.reshape(-1, *[1] * (top.ndim - 1))
-        value: FloatArray = top / smooth.derivatives(leverage)[0]
+        value: FloatArray = top / smooth.value(leverage)
         return value
 
     x, value = start, ratio(start)
