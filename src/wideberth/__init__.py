@@ -1,3 +1,87 @@
-"""wideberth: one setpoint with ranges from a response-surface experiment."""
+"""wideberth: one setpoint with ranges from a response-surface experiment.
+
+The doorway to every step, loaded on first use:
+
+>>> import wideberth as wb
+>>> sorted(wb.__all__)[:3]
+['InputError', 'NumericalError', 'RefusedError']
+"""
+
+from __future__ import annotations
+
+import sys
+from importlib import import_module
+from types import ModuleType
+from typing import TYPE_CHECKING, Any
+
+if TYPE_CHECKING:
+    from wideberth.chain.record import build_record
+    from wideberth.decide.recommend import recommend
+    from wideberth.errors import InputError, NumericalError, RefusedError, WideberthError
+    from wideberth.fit.models import fit
+    from wideberth.report.memo import memo_html, write_memo
+    from wideberth.study.checking import check_study
+    from wideberth.study.reading import read_study
+    from wideberth.study.template import start_study
+    from wideberth.surface.ridge import shape
 
 __version__ = "0.1.0"
+
+__all__ = [
+    "InputError",
+    "NumericalError",
+    "RefusedError",
+    "WideberthError",
+    "build_record",
+    "check_study",
+    "fit",
+    "memo_html",
+    "read_study",
+    "recommend",
+    "shape",
+    "start_study",
+    "write_memo",
+]
+
+_HOMES = {
+    "InputError": "errors",
+    "NumericalError": "errors",
+    "RefusedError": "errors",
+    "WideberthError": "errors",
+    "build_record": "chain.record",
+    "check_study": "study.checking",
+    "fit": "fit.models",
+    "memo_html": "report.memo",
+    "read_study": "study.reading",
+    "recommend": "decide.recommend",
+    "shape": "surface.ridge",
+    "start_study": "study.template",
+    "write_memo": "report.memo",
+}
+
+
+class _Doorway(ModuleType):
+    """The package as a module whose steps win over rooms of the same name.
+
+    Importing the room ``wideberth.fit`` binds it on the package; the step ``fit`` must stay what
+    ``wideberth.fit`` means to a caller, so that binding is not taken.
+    """
+
+    def __getattr__(self, name: str) -> Any:
+        if name not in _HOMES:
+            message = f"wideberth has no {name!r}; it offers {', '.join(__all__)}"
+            raise AttributeError(message)
+        found = getattr(import_module(f"wideberth.{_HOMES[name]}"), name)
+        super().__setattr__(name, found)
+        return found
+
+    def __setattr__(self, name: str, value: Any) -> None:
+        if name in _HOMES and isinstance(value, ModuleType):
+            return
+        super().__setattr__(name, value)
+
+    def __dir__(self) -> list[str]:
+        return sorted({*super().__dir__(), *__all__})
+
+
+sys.modules[__name__].__class__ = _Doorway

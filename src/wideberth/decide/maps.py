@@ -15,13 +15,12 @@ from wideberth.decide.desirability import overall
 from wideberth.decide.judge import read_setting
 from wideberth.decide.problem import Problem, arena
 from wideberth.decide.records import Choice, FactorMap, LimitMap
-from wideberth.fit.records import surface
 from wideberth.quadratic.terms import features
 from wideberth.study.coding import to_actual
 from wideberth.study.records import FloatArray
 from wideberth.surface.explored import contains
 
-_N_GRID = 61
+_N_GRID = 41
 _MOST_FACTORS = 3
 _BEYOND = 0.08
 
@@ -76,11 +75,7 @@ def _map(
     if b is not None:
         grid[:, :, b] = up[:, None]
     actual, terms = to_actual(study.numeric, grid), features(grid)
-    means = {
-        model.response: terms @ surface(model, study, levels=rows.levels).coefficients
-        for model in problem.models.models
-    }
-    y = np.stack([means[goal.response] for goal in rows.goals], axis=-1) if rows.goals else None
+    y = terms @ rows.goal_means.T if rows.goals else None
     margins = []
     for limit in rows.limits:
         side = problem.sides[limit]
@@ -91,7 +86,6 @@ def _map(
         up="" if b is None else study.numeric[b].name,
         across_actual=actual[0, :, a],
         up_actual=np.zeros(1) if b is None else actual[:, 0, b],
-        means=means,
         desirability=None if y is None else overall(rows.goals, y),
         margins=tuple(margins),
         explored=contains(problem.explored, grid),

@@ -81,6 +81,18 @@ def recommend(
         When the study states neither a goal nor a limit, when nothing is left to search, or when
         the given setting cannot be read.
     """
+    return solve(models, seed=seed, at=at, room=room, progress=progress)[1]
+
+
+def solve(
+    models: Models,
+    *,
+    seed: int | None = None,
+    at: Setting | None = None,
+    room: bool = True,
+    progress: Progress = silent,
+) -> tuple[Problem, Choice]:
+    """Do as `recommend`, and give the problem as well, for steps that go on from it."""
     study = models.study
     if not any(response.goal or response.limit for response in study.responses):
         raise refusal(
@@ -94,7 +106,7 @@ def recommend(
     progress("search", 0.4)
     choice = _judge_given(problem, at) if at is not None else _choose(problem)
     progress("search", 1.0)
-    return replace(choice, seed=chosen_seed)
+    return problem, replace(choice, seed=chosen_seed)
 
 
 def _choose(problem: Problem) -> Choice:

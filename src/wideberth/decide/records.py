@@ -195,8 +195,6 @@ class FactorMap:
     ----------
     across_actual, up_actual : ndarray, shapes (n_across,) and (n_up,)
         Own units.
-    means : mapping of response to ndarray, shape (n_up, n_across)
-        Fitted means, block average, own units.
     desirability : ndarray or None, shape (n_up, n_across)
         Overall desirability of the fitted means; ``None`` without goals.
     explored : ndarray of bool, shape (n_up, n_across)
@@ -207,7 +205,6 @@ class FactorMap:
     up: str
     across_actual: FloatArray
     up_actual: FloatArray
-    means: Mapping[str, FloatArray]
     desirability: FloatArray | None
     margins: tuple[LimitMap, ...]
     explored: BoolArray

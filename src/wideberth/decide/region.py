@@ -195,17 +195,18 @@ def _even_points(n: int, dimension: int) -> FloatArray:
     ratio = 2.0
     for _ in range(64):
         ratio = (1.0 + ratio) ** (1.0 / (dimension + 1))
-    steps: FloatArray = np.power(1.0 / ratio, np.arange(1, dimension + 1, dtype=np.float64))
+    steps = np.array([ratio ** -(i + 1.0) for i in range(dimension)])
     counts = np.arange(1, n + 1, dtype=np.float64)
     spread: FloatArray = 0.5 + counts[:, None] * steps
-    return spread - np.floor(spread)
+    spread -= np.floor(spread)
+    return spread
 
 
 def _sign_rays(r: int) -> FloatArray:
     """Axes and corners; all of {-1, 0, 1}^r without the zero up to five directions."""
     if r <= 5:
         grid = np.stack(np.meshgrid(*[[-1.0, 0.0, 1.0]] * r, indexing="ij"), axis=-1)
-        rays = grid.reshape(-1, r)
+        rays: FloatArray = grid.reshape(-1, r).astype(np.float64)
         return rays[np.abs(rays).sum(axis=1) > 0]
     corners = np.stack(np.meshgrid(*[[-1.0, 1.0]] * r, indexing="ij"), axis=-1).reshape(-1, r)
     return np.concatenate([np.eye(r), -np.eye(r), corners])

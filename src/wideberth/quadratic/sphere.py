@@ -54,27 +54,23 @@ def extreme_on_sphere(stack: Stack, radius: float, *, largest: bool) -> SphereEx
         direction = axes[:, int(np.argmax(at_top))]
         x = _positive_first(axes @ rest + missing * direction, axes @ rest - missing * direction)
         return SphereExtreme(x, float(stack.value(x)), tied=missing > 0)
-    x = axes @ (pull / (_root(curvature, pull, radius, top) - curvature))
+    below = top - curvature
+    x = axes @ (pull / (_gap(below, pull, radius) + below))
     x *= radius / float(np.sqrt(x @ x))
     return SphereExtreme(x, float(stack.value(x)), tied=False)
 
 
-def _root(curvature: FloatArray, pull: FloatArray, radius: float, top: float) -> float:
-    """Solve ``1/radius = 1/|x(mu)|`` above the top eigenvalue, where it has one root."""
-    size = float(np.sqrt(pull @ pull))
+def _gap(below: FloatArray, pull: FloatArray, radius: float) -> float:
+    """Solve ``1/radius = 1/|x|`` for how far mu lies above the top eigenvalue: one root."""
 
-    def excess(mu: float) -> float:
-        gap = mu - curvature
-        if (gap <= 0).any():
+    def excess(gap: float) -> float:
+        if gap == 0.0:
             return -1.0 / radius
-        length = float(np.sqrt(((pull / gap) ** 2).sum()))
+        length = float(np.sqrt(((pull / (gap + below)) ** 2).sum()))
         return 1.0 / length - 1.0 / radius
 
-    high = top + size / radius
-    root: float = brentq(excess, top, high * (1 + 1e-12) + 1e-300, xtol=1e-300, rtol=1e-15)
-    if (root - curvature <= 0).any():
-        root = float(np.nextafter(top, np.inf))
-    return root
+    farthest = float(np.sqrt(pull @ pull)) / radius * (1 + 1e-9)
+    return float(brentq(excess, 0.0, farthest, xtol=1e-300, rtol=1e-15, maxiter=500))
 
 
 def _positive_first(one: FloatArray, other: FloatArray) -> FloatArray:

@@ -65,7 +65,14 @@ def canonical(surface: Surface, n_factors: int) -> Canonical:
     singular = flat or float(np.abs(values).min()) <= _SINGULAR * size
     stationary = None if singular else np.linalg.solve(stack.quad, -stack.lin / 2)
     nature, sentence = _nature(values, half_widths, flat=flat)
-    return Canonical(stationary, values, directions, half_widths, nature, sentence)
+    return Canonical(
+        None if stationary is None else np.asarray(stationary, dtype=np.float64),
+        values,
+        directions,
+        half_widths,
+        nature,
+        sentence,
+    )
 
 
 def _half_widths(surface: Surface, directions: FloatArray) -> FloatArray | None:
@@ -76,7 +83,7 @@ def _half_widths(surface: Surface, directions: FloatArray) -> FloatArray | None:
     for i, direction in enumerate(directions):
         gradient[i] = _curvature_weights(direction)
     variance = np.einsum("ip,pq,iq->i", gradient, surface.covariance, gradient)
-    widths: FloatArray = stdtrit(surface.df, 0.975) * surface.s * np.sqrt(variance)
+    widths: FloatArray = float(stdtrit(surface.df, 0.975)) * surface.s * np.sqrt(variance)
     return widths
 
 

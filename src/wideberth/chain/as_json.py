@@ -1,0 +1,174 @@
+"""Records as plain JSON: full precision, never NaN, missing values as null with a reason."""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Iterable, Mapping
+from dataclasses import asdict, fields, is_dataclass
+from decimal import Decimal
+from typing import Any
+
+import numpy as np
+
+from wideberth import __version__
+from wideberth.chain.record import Record
+from wideberth.decide.records import Choice
+from wideberth.errors import Fault
+from wideberth.fit.records import Model, Models
+from wideberth.study.records import Finding, Study
+from wideberth.surface.records import Shape
+
+Json = dict[str, Any]
+
+
+def dumps(content: Json) -> str:
+    """Write JSON text; a number that JSON cannot hold is a fault of ours and raises."""
+    return json.dumps(content, ensure_ascii=False, allow_nan=False, indent=1) + "\n"
+
+
+def dumps_record(content: Json) -> str:
+    """Write a record, one line a part, so that its maps do not fill the file with line ends."""
+    lines = [
+        f"{json.dumps(key)}: {json.dumps(part, ensure_ascii=False, allow_nan=False)}"
+        for key, part in content.items()
+    ]
+    return "{\n" + ",\n".join(lines) + "\n}\n"
+
+
+def refused_json(faults: Iterable[Fault]) -> Json:
+    """Give what is printed when the input is refused."""
+    return {"status": "refused", "errors": [asdict(fault) for fault in faults]}
+
+
+def check_json(study: Study, findings: tuple[Finding, ...]) -> Json:
+    """Give the answer of ``check``."""
+    return {
+        **_head("check", study),
+        "status": "doubtful" if findings else "sound",
+        "runs": len(study.runs.rows),
+        "findings": [asdict(finding) for finding in findings],
+    }
+
+
+def fit_json(models: Models) -> Json:
+    """Give the answer of ``fit``."""
+    return {
+        **_head("fit", models.study),
+        "responses": {model.response: _model(model) for model in models.models},
+    }
+
+
+def shape_json(shapes: tuple[Shape, ...], study: Study) -> Json:
+    """Give the answer of ``shape``; levels of categorical factors make a list a response."""
+    responses: Json = {}
+    for one in shapes:
+        content = _plain(one)
+        name = content.pop("response")
+        if study.categorical:
+            responses.setdefault(name, []).append(content)
+        else:
+            del content["levels"]
+            responses[name] = content
+    return {**_head("shape", study), "responses": responses}
+
+
+def recommend_json(choice: Choice, study: Study) -> Json:
+    """Give the answer of ``recommend``."""
+    content = _plain(choice)
+    head = {**_head("recommend", study), "seed": choice.seed}
+    return {**head, **{key: value for key, value in content.items() if key != "seed"}}
+
+
+def record_json(record: Record) -> Json:
+    """Give the whole record."""
+    study = record.study
+    return {
+        "command": "memo",
+        "version": record.version,
+        "packages": dict(record.packages),
+        "seed": record.seed,
+        "sha256": dict(study.sha256),
+        "study": _study(study),
+        "doubts": [asdict(finding) for finding in record.doubts],
+        "fit": {
+            model.response: {**_model(model), **_covariance(model)}
+            for model in record.models.models
+        },
+        "shape": shape_json(record.shapes, study)["responses"],
+        "recommend": recommend_json(record.choice, study),
+        "maps": _plain(record.maps),
+    }
+
+
+def _head(command: str, study: Study) -> Json:
+    return {
+        "command": command,
+        "version": __version__,
+        "study_sha256": study.sha256.get("study"),
+    }
+
+
+def _model(model: Model) -> Json:
+    content: Json = {
+        "unit": model.unit,
+        "exact": model.exact,
+        "order": model.order,
+        "n": model.n_runs,
+        "df_residual": model.df_residual,
+        "coefficients": [_plain(term) for term in model.table],
+        "s": model.s,
+        "r2": model.r2,
+        "r2_adjusted": model.r2_adjusted,
+        "press": model.press,
+        "r2_press": model.r2_press,
+        "lack_of_fit": None,
+        "noise_free": model.noise_free,
+        "runs": [_plain(run) for run in model.runs],
+        "findings": [asdict(finding) for finding in model.findings],
+        "grade": model.grade,
+        "reasons": dict(model.reasons),
+    }
+    if model.lack_of_fit is not None:
+        content["lack_of_fit"] = _plain(model.lack_of_fit)
+    return content
+
+
+def _covariance(model: Model) -> Json:
+    return {"unscaled_covariance": _plain(model.covariance)}
+
+
+def _study(study: Study) -> Json:
+    content = {
+        field.name: _plain(getattr(study, field.name))
+        for field in fields(study)
+        if field.name not in ("directory", "sha256", "notes")
+    }
+    for stated, response in zip(content["responses"], study.responses, strict=True):
+        if response.formula is not None:
+            stated["formula"] = {
+                "*".join(names) or "constant": number
+                for names, number in response.formula.terms.items()
+            }
+    return content
+
+
+def _plain(value: Any) -> Any:
+    """Turn records, arrays and paths into what JSON knows; not-a-number becomes null."""
+    if is_dataclass(value) and not isinstance(value, type):
+        return {
+            field.name: _plain(getattr(value, field.name))
+            for field in fields(value)
+            if field.name != "formula"
+        }
+    if isinstance(value, Mapping):
+        return {str(key): _plain(item) for key, item in value.items()}
+    if isinstance(value, np.ndarray | list | tuple):
+        return [
+            _plain(item) for item in (value.tolist() if isinstance(value, np.ndarray) else value)
+        ]
+    if isinstance(value, float | Decimal):
+        return float(value) if np.isfinite(float(value)) else None
+    if isinstance(value, bool | int | str) or value is None:
+        return value
+    message = f"{type(value).__name__} has no place in JSON"
+    raise TypeError(message)

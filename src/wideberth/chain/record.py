@@ -1,0 +1,81 @@
+"""The whole job in one call, and the one frozen record that memo and JSON read."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from importlib.metadata import version as package_version
+
+from wideberth import __version__
+from wideberth.decide.maps import factor_maps
+from wideberth.decide.recommend import solve
+from wideberth.decide.records import Choice, FactorMap
+from wideberth.fit.models import fit
+from wideberth.fit.records import Models
+from wideberth.progress import Progress, silent
+from wideberth.study.checking import check_study
+from wideberth.study.records import Finding, Study
+from wideberth.surface.records import Shape
+from wideberth.surface.ridge import shape
+
+_PACKAGES = ("numpy", "scipy")
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Record:
+    """Everything that was computed for one study, with what is needed to compute it again.
+
+    Attributes
+    ----------
+    version : str
+        Of wideberth.
+    packages : mapping
+        Versions of the packages that the numbers rest on.
+    seed : int
+    doubts : tuple of Finding
+        What `check_study` found.
+    maps : tuple of FactorMap
+        Two factors at a time through the setpoint.
+    """
+
+    version: str
+    packages: Mapping[str, str]
+    seed: int
+    study: Study
+    doubts: tuple[Finding, ...]
+    models: Models
+    shapes: tuple[Shape, ...]
+    choice: Choice
+    maps: tuple[FactorMap, ...]
+
+
+def build_record(study: Study, *, seed: int | None = None, progress: Progress = silent) -> Record:
+    """Run every step of the job on a study.
+
+    Raises
+    ------
+    RefusedError
+        When the study states neither a goal nor a limit, or a step cannot serve it.
+    """
+    progress("check", 0.0)
+    doubts = check_study(study)
+    progress("fit", 0.05)
+    models = fit(study)
+    progress("shape", 0.15)
+    shapes = shape(models) if study.numeric else ()
+    progress("recommend", 0.2)
+    problem, choice = solve(models, seed=seed)
+    progress("maps", 0.8)
+    maps = factor_maps(problem, choice)
+    progress("record", 0.95)
+    return Record(
+        version=__version__,
+        packages={name: package_version(name) for name in _PACKAGES},
+        seed=choice.seed,
+        study=study,
+        doubts=doubts,
+        models=models,
+        shapes=shapes,
+        choice=choice,
+        maps=maps,
+    )

@@ -1,0 +1,102 @@
+"""What every command shares: its options, how it fails, and how it prints."""
+
+from __future__ import annotations
+
+import os
+import sys
+from collections.abc import Callable, Iterable, Sequence
+from functools import wraps
+from typing import Any, ParamSpec
+
+import click
+
+from wideberth.errors import InputError
+
+P = ParamSpec("P")
+Command = Callable[P, int]
+
+
+def study_argument(function: Callable[P, Any]) -> Callable[P, Any]:
+    """Take the study folder."""
+    return click.argument("study_dir", type=click.Path())(function)
+
+
+def json_option(function: Callable[P, Any]) -> Callable[P, Any]:
+    """Take ``--json``."""
+    return click.option(
+        "--json", "as_json", is_flag=True, help="Print the answer as JSON and nothing else."
+    )(function)
+
+
+def seed_option(function: Callable[P, Any]) -> Callable[P, Any]:
+    """Take ``--seed``."""
+    return click.option(
+        "--seed",
+        type=click.IntRange(min=0),
+        help="Seed of the simulations, instead of the study's.",
+    )(function)
+
+
+def quiet_option(function: Callable[P, Any]) -> Callable[P, Any]:
+    """Take ``--quiet``."""
+    return click.option("--quiet", is_flag=True, help="Show no progress.")(function)
+
+
+def guarded(function: Command[P]) -> Callable[P, None]:
+    """Turn what went wrong into words and an exit code, and the command's result into one."""
+
+    @wraps(function)
+    def run(*args: P.args, **kwargs: P.kwargs) -> None:
+        as_json = bool(kwargs.get("as_json", False))
+        try:
+            code = function(*args, **kwargs)
+        except InputError as error:
+            _print_faults(error, as_json=as_json)
+            code = 2
+        except BrokenPipeError:
+            # whoever read the output has gone; nothing is wrong
+            os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+            code = 0
+        except (click.ClickException, click.exceptions.Exit, click.Abort):
+            raise
+        except Exception as error:
+            if os.environ.get("WIDEBERTH_DEBUG"):
+                raise
+            click.echo(
+                f"wideberth failed: {type(error).__name__}: {error}\nThis is a fault of wideberth,"
+                " not of your study. Set WIDEBERTH_DEBUG=1 to see where, and report it.",
+                err=True,
+            )
+            code = 1
+        raise SystemExit(code)
+
+    return run
+
+
+def _print_faults(error: InputError, *, as_json: bool) -> None:
+    if as_json:
+        from wideberth.chain.as_json import dumps, refused_json
+
+        click.echo(dumps(refused_json(error.faults)), nl=False)
+        return
+    n_faults = len(error.faults)
+    click.echo(f"{n_faults} {'thing is' if n_faults == 1 else 'things are'} wrong:", err=True)
+    for fault in error.faults:
+        click.echo(f"- {fault.where}: {fault.what}\n  {fault.mend}", err=True)
+
+
+def print_table(header: Sequence[str], rows: Iterable[Sequence[str]]) -> None:
+    """Print aligned columns; the first is flush left, the others flush right."""
+    lines = [list(header), *(list(row) for row in rows)]
+    widths = [max(len(line[i]) for line in lines) for i in range(len(header))]
+    for line in lines:
+        cells = [line[0].ljust(widths[0])]
+        cells += [cell.rjust(width) for cell, width in zip(line[1:], widths[1:], strict=True)]
+        click.echo("  " + "  ".join(cells).rstrip())
+
+
+def print_findings(findings: Iterable[Any]) -> None:
+    """Print findings, one a line, worst mark first in each."""
+    marks = {"do not use": "DO NOT USE", "look": "look", "fine": "fine"}
+    for finding in findings:
+        click.echo(f"  [{marks[finding.grade]}] {finding.text}")

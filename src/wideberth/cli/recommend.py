@@ -1,0 +1,183 @@
+"""``wideberth recommend``."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import click
+
+from wideberth.cli.frame import (
+    guarded,
+    json_option,
+    print_findings,
+    print_table,
+    quiet_option,
+    seed_option,
+    study_argument,
+)
+
+if TYPE_CHECKING:
+    from wideberth.decide.records import Choice
+    from wideberth.study.records import Study
+
+
+@click.command("recommend")
+@study_argument
+@click.option("--at", help="Judge this setting instead: NAME=VALUE,NAME=VALUE,...")
+@click.option(
+    "--room",
+    type=click.Choice(["stated", "none"]),
+    default="stated",
+    show_default=True,
+    help="none: the bare optimum, without the room of the tolerances.",
+)
+@seed_option
+@json_option
+@quiet_option
+@guarded
+def command(
+    study_dir: str, *, at: str | None, room: str, seed: int | None, as_json: bool, quiet: bool
+) -> int:
+    """Name the setpoint: the best compromise of the goals inside all limits.
+
+    Example: wideberth recommend my-study --at catalyst=1.2,pressure=8,substrate=140
+    """
+    from wideberth.chain.as_json import dumps, recommend_json
+    from wideberth.cli.progress import ProgressLine
+    from wideberth.decide.recommend import recommend
+    from wideberth.fit.models import fit
+    from wideberth.study.reading import read_study
+
+    study = read_study(study_dir)
+    progress = ProgressLine(quiet=quiet or as_json)
+    setting = None if at is None else _setting(study, at)
+    choice = recommend(fit(study), seed=seed, at=setting, room=room == "stated", progress=progress)
+    progress.close()
+    if as_json:
+        click.echo(dumps(recommend_json(choice, study)), nl=False)
+    else:
+        print_choice(choice, study)
+    return 0 if choice.status == "met" else 3
+
+
+def _setting(study: Study, text: str) -> dict[str, float | str]:
+    from wideberth.errors import refusal
+
+    numeric = {factor.name for factor in study.numeric}
+    setting: dict[str, float | str] = {}
+    for part in text.split(","):
+        name, equals, value = (piece.strip() for piece in part.partition("="))
+        if not equals or not value:
+            raise refusal(f"'{part}' is no NAME=VALUE", "--at", "write catalyst=1.2,pressure=8")
+        if name in setting:
+            raise refusal(f"{name} is given twice", "--at", "give every factor once")
+        setting[name] = value
+        if name in numeric:
+            try:
+                setting[name] = float(value)
+            except ValueError as error:
+                raise refusal(f"{name} is '{value}'", "--at", "give a number") from error
+    return setting
+
+
+def print_choice(choice: Choice, study: Study) -> None:
+    """Print the answer on one screen, what spoils trust first."""
+    from wideberth.report.wording import CAUTIONS, STATUS_SENTENCE, promise
+
+    doubts = [finding for finding in choice.findings if finding.grade != "fine"]
+    if doubts:
+        click.echo("Before anything else:")
+        print_findings(doubts)
+        click.echo("")
+    click.echo(f"{choice.status}: {STATUS_SENTENCE[choice.status]}")
+    for conflict in choice.conflicts:
+        click.echo(f"  {conflict.text}")
+    _print_setting(choice, study)
+    _print_predictions(choice)
+    _print_limits(choice)
+    for sentence in choice.edge:
+        click.echo(sentence)
+    if choice.confirmation is not None:
+        click.echo(f"Confirmation: {choice.confirmation.text}.")
+    if choice.desirability is not None:
+        click.echo(f"Overall desirability {choice.desirability:.3f} (1 is ideal).")
+    for goal in choice.goals:
+        if goal.defaulted:
+            click.echo(f"Goal of {goal.response}: {goal.defaulted}.")
+    said = promise(choice)
+    if said:
+        click.echo(said)
+    click.echo("Cautions: " + " ".join(CAUTIONS))
+
+
+def _print_setting(choice: Choice, study: Study) -> None:
+    from wideberth.report.numbers import decimals_of, format_setting, format_value
+
+    if choice.setpoint is None:
+        return
+    click.echo("\nSetting judged" if choice.asked else "\nSetpoint")
+    units = {factor.name: factor.unit for factor in study.factors}
+    numeric = {factor.name: factor for factor in study.numeric}
+    rows = []
+    for name, value in choice.setpoint.items():
+        around = choice.factors.get(name)
+        room = allowed = explored = ""
+        if around is not None:
+            digits = decimals_of(numeric[name])
+            room = _ends(around.room, digits) if around.room else "no tolerance stated"
+            allowed = " to ".join(format_value(end) for end in around.allowed)
+            explored = _ends(around.explored, digits)
+        rows.append(
+            (f"{name} [{units[name]}]", format_setting(study, name, value), room, allowed, explored)
+        )
+    print_table(("factor", "set", "hold within", "allowed", "explored"), rows)
+
+
+def _ends(ends: tuple[float, float], digits: int) -> str:
+    return f"{ends[0]:.{digits}f} to {ends[1]:.{digits}f}"
+
+
+def _print_predictions(choice: Choice) -> None:
+    from wideberth.report.numbers import format_range, format_value
+
+    click.echo("\nExpected there")
+    rows = []
+    for name, prediction in choice.predictions.items():
+        interval, batch = prediction.mean_interval, prediction.batch_interval
+        half = (interval[1] - interval[0]) / 2 if interval else None
+        spread = (batch[1] - batch[0]) / 2 if batch else None
+        rows.append(
+            (
+                f"{name} [{prediction.unit}]" if prediction.unit else name,
+                format_value(prediction.mean, half or None),
+                format_range(*interval, half) if interval and half else "",
+                format_range(*batch, spread) if batch and spread else "",
+            )
+        )
+    print_table(("response", "mean", "95 % interval", "95 % of single batches"), rows)
+
+
+def _print_limits(choice: Choice) -> None:
+    from wideberth.report.wording import guard_sentence, limit_words, margin_words
+
+    if not choice.limits and not choice.constraints:
+        return
+    click.echo("\nLimits, judged over the whole room")
+    for verdict in choice.limits:
+        mark = "met" if verdict.met else "NOT MET"
+        guard = guard_sentence(verdict.guard, verdict.confidence, verdict.share)
+        block = f"; worst block {verdict.block}" if verdict.block else ""
+        click.echo(
+            f"  {verdict.response} {limit_words(verdict)}: {mark}, {margin_words(verdict)}"
+            f" ({guard}{block})"
+        )
+    for constraint in choice.constraints:
+        mark = "met" if constraint.met else "NOT MET"
+        word = "at most" if constraint.side == "at_most" else "at least"
+        click.echo(
+            f"  {constraint.name} {word} {constraint.bound:g}: {mark}, {constraint.value:.5g} at"
+            " its worst"
+        )
+    if choice.ruling:
+        click.echo(f"  The limit that rules: {choice.ruling}.")
+    click.echo("")

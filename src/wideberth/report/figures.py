@@ -1,0 +1,247 @@
+"""The figures, each drawn on axes of the caller's or on its own.
+
+Every drawing function takes records, computes nothing but positions, and returns the figure.
+"""
+
+from __future__ import annotations
+
+from math import ceil
+
+import numpy as np
+from matplotlib.axes import Axes
+from matplotlib.figure import Figure
+from matplotlib.patches import Rectangle
+
+from wideberth.decide.records import Choice, FactorMap, LimitMap, LimitVerdict
+from wideberth.fit.records import Model, Models
+from wideberth.report.style import (
+    BLUE,
+    FAINT,
+    INK,
+    LINES,
+    RUST,
+    SHADE,
+    WIDTH,
+    house_style,
+    plain_axes,
+)
+from wideberth.study.records import FloatArray, Study
+
+_STANDS_OUT = 3.0
+_SHADED_TO = 6.0
+
+
+def shortened(name: str, longest: int = 26) -> str:
+    """Cut a long name so that it fits on an axis."""
+    return name if len(name) <= longest else name[: longest - 1] + "…"
+
+
+def axis_label(name: str, unit: str) -> str:
+    """Name a quantity with its unit; dollar signs are not mathematics here."""
+    text = f"{shortened(name)} [{unit}]" if unit else shortened(name)
+    return text.replace("$", r"\$")
+
+
+def draw_margins(limits: tuple[LimitVerdict, ...], ax: Axes | None = None) -> Figure:
+    """Draw the margins of all limits on one axis: right of 0 holds, left of 0 is broken."""
+    judged = [verdict for verdict in limits if verdict.margin is not None]
+    with house_style():
+        figure, ax = _axes(ax, (WIDTH, 0.75 + 0.26 * max(len(judged), 1)))
+        for place, verdict in enumerate(judged):
+            margin = verdict.margin or 0.0
+            colour = BLUE if verdict.met else RUST
+            ax.plot([0, margin], [place, place], color=colour, linewidth=2.2)
+            ax.plot(
+                margin, place, "o" if verdict.met else "X", color=colour, markersize=6, zorder=3
+            )
+        ax.axvline(0, color=INK, linewidth=0.9)
+        ends = [verdict.margin or 0.0 for verdict in judged]
+        span = max([*ends, 1.0]) - min([*ends, 0.0])
+        ax.set_xlim(min([*ends, 0.0]) - 0.08 * span, max([*ends, 1.0]) + 0.08 * span)
+        ax.set_ylim(len(judged) - 0.4, -0.6)
+        ax.set_yticks(range(len(judged)), [_limit_name(v, v.unit) for v in judged])
+        sds = all(verdict.margin_in == "batch sd" for verdict in judged)
+        ax.set_xlabel(
+            "margin [standard deviations of a batch], 0 = just met"
+            if sds
+            else "margin [batch sd, or hundredths of the response's range], 0 = just met"
+        )
+        ax.spines["left"].set_visible(False)
+        plain_axes(ax)
+    return figure
+
+
+def draw_map(study: Study, choice: Choice, view: FactorMap, ax: Axes | None = None) -> Figure:
+    """Draw two factors through the setpoint: shading by the smallest margin, limits by name."""
+    with house_style():
+        figure, ax = _axes(ax, (WIDTH * 0.62, WIDTH * 0.5))
+        smallest = _smallest(view)
+        shade = view.desirability if smallest is None else np.clip(smallest, 0.0, _SHADED_TO)
+        label = "desirability" if smallest is None else "smallest margin [batch sd]"
+        if shade is not None:
+            top = 1.0 if smallest is None else _SHADED_TO
+            steps = np.linspace(0, top, 13)
+            filled = ax.contourf(
+                view.across_actual, view.up_actual, shade, levels=steps, cmap=SHADE, alpha=0.75
+            )
+            bar = figure.colorbar(filled, ax=ax, pad=0.02, fraction=0.05)
+            bar.set_label(label)
+            bar.set_ticks(np.linspace(0, top, 4 if smallest is not None else 5).tolist())
+            bar.outline.set_visible(False)  # type: ignore[operator]
+        for i, limit in enumerate(view.margins):
+            _limit_line(ax, view, limit, i, study)
+        if view.explored.any() and not view.explored.all():
+            ax.contour(
+                view.across_actual,
+                view.up_actual,
+                view.explored.astype(float),
+                levels=[0.5],
+                colors=FAINT,
+                linewidths=1.0,
+                linestyles=[(0, (1, 2))],
+            )
+        _mark_runs(ax, study, view)
+        _mark_setpoint(ax, choice, view)
+        units = {factor.name: factor.unit for factor in study.factors}
+        ax.set_xlabel(axis_label(view.across, units[view.across]))
+        ax.set_ylabel(axis_label(view.up, units[view.up]))
+        ax.set_xlim(view.across_actual[0], view.across_actual[-1])
+        ax.set_ylim(view.up_actual[0], view.up_actual[-1])
+        plain_axes(ax)
+    return figure
+
+
+def draw_line(study: Study, choice: Choice, view: FactorMap, ax: Axes | None = None) -> Figure:
+    """Draw the only factor there is: each limit's margin along it, by name."""
+    with house_style():
+        figure, ax = _axes(ax, (WIDTH * 0.8, 2.6))
+        x = view.across_actual
+        for i, limit in enumerate(view.margins):
+            y = limit.margin[0]
+            ax.plot(x, y, color=INK, linestyle=LINES[i % len(LINES)], linewidth=1.3)
+            place = int(len(x) * 0.5)
+            ax.annotate(shortened(limit.response), (x[place], y[place]), fontsize=7)
+        if not view.margins and view.desirability is not None:
+            ax.plot(x, view.desirability[0], color=BLUE, linewidth=1.5)
+        value = (choice.setpoint or {}).get(view.across)
+        around = choice.factors[view.across].room if view.across in choice.factors else None
+        if isinstance(value, float):
+            ax.axvline(value, color=BLUE, linewidth=1.2)
+        if around is not None:
+            ax.axvspan(*around, color=BLUE, alpha=0.15)
+        if view.margins:
+            ax.axhline(0, color=INK, linewidth=0.9)
+        units = {factor.name: factor.unit for factor in study.factors}
+        ax.set_xlabel(axis_label(view.across, units[view.across]))
+        ax.set_ylabel("margin [batch sd]" if view.margins else "desirability")
+        plain_axes(ax)
+    return figure
+
+
+def draw_residuals(models: Models) -> Figure:
+    """Draw each measured response's residuals against its fitted values, odd runs by row."""
+    shown = [model for model in models.models if model.runs]
+    columns = min(3, max(len(shown), 1))
+    lines = ceil(len(shown) / columns) or 1
+    with house_style():
+        figure = Figure(figsize=(WIDTH, 2.05 * lines), layout="constrained")
+        for place, model in enumerate(shown, start=1):
+            _residual_panel(figure.add_subplot(lines, columns, place), model)
+    return figure
+
+
+def _axes(ax: Axes | None, size: tuple[float, float]) -> tuple[Figure, Axes]:
+    if ax is None:
+        figure = Figure(figsize=size, layout="constrained")
+        return figure, figure.add_subplot()
+    figure = ax.get_figure(root=True)  # type: ignore[assignment]
+    return figure, ax
+
+
+def _limit_name(limit: LimitVerdict | LimitMap, unit: str) -> str:
+    word = "≥" if limit.side == "low" else "≤"
+    text = f"{shortened(limit.response)} {word} {limit.value:.6g} {unit}".rstrip()
+    return text.replace("$", r"\$")
+
+
+def _smallest(view: FactorMap) -> FloatArray | None:
+    if not view.margins:
+        return None
+    smallest: FloatArray = np.min([limit.margin for limit in view.margins], axis=0)
+    return smallest
+
+
+def _limit_line(ax: Axes, view: FactorMap, limit: LimitMap, i: int, study: Study) -> None:
+    if not (limit.margin.min() < 0 < limit.margin.max()):
+        return
+    unit = next(r.unit for r in study.responses if r.name == limit.response)
+    lines = ax.contour(
+        view.across_actual,
+        view.up_actual,
+        limit.margin,
+        levels=[0.0],
+        colors=INK,
+        linewidths=1.4,
+        linestyles=[LINES[i % len(LINES)]],
+    )
+    ax.clabel(lines, fmt={0.0: _limit_name(limit, unit)}, fontsize=7, inline=True)
+
+
+def _mark_runs(ax: Axes, study: Study, view: FactorMap) -> None:
+    names = [factor.name for factor in study.numeric]
+    runs = study.runs.numeric_actual[study.runs.fitted]
+    ax.plot(
+        runs[:, names.index(view.across)],
+        runs[:, names.index(view.up)],
+        ".",
+        color=FAINT,
+        markersize=4,
+        zorder=3,
+    )
+
+
+def _mark_setpoint(ax: Axes, choice: Choice, view: FactorMap) -> None:
+    setpoint = choice.setpoint or {}
+    x, y = setpoint.get(view.across), setpoint.get(view.up)
+    if not isinstance(x, float) or not isinstance(y, float):
+        return
+    across, up = choice.factors[view.across].room, choice.factors[view.up].room
+    left, right = across or (x, x)
+    low, high = up or (y, y)
+    ax.add_patch(
+        Rectangle(
+            (left, low),
+            right - left,
+            high - low,
+            facecolor="white",
+            edgecolor=RUST,
+            linewidth=1.4,
+            zorder=4,
+        )
+    )
+    ax.plot(x, y, "D", color=RUST, markersize=3.5, zorder=5)
+
+
+def _residual_panel(ax: Axes, model: Model) -> None:
+    fitted = np.array([run.fitted for run in model.runs])
+    known = all(run.studentized is not None for run in model.runs)
+    heights = np.array([run.studentized if known else run.residual for run in model.runs], float)
+    ax.axhline(0, color=FAINT, linewidth=0.8)
+    ax.plot(fitted, heights, "o", color=BLUE, markersize=3.2, markerfacecolor="white")
+    for run, height in zip(model.runs, heights, strict=True):
+        if known and abs(height) > _STANDS_OUT:
+            ax.annotate(
+                f"row {run.row}",
+                (run.fitted, height),
+                xytext=(3, 2),
+                textcoords="offset points",
+                fontsize=6.5,
+            )
+    if known:
+        reach = max(_STANDS_OUT, float(np.abs(heights).max())) * 1.15
+        ax.set_ylim(-reach, reach)
+    ax.set_title(shortened(model.response).replace("$", r"\$"), loc="left")
+    ax.set_xlabel(f"fitted [{model.unit}]" if model.unit else "fitted")
+    ax.set_ylabel("studentized residual" if known else f"residual [{model.unit}]")
+    ax.locator_params(axis="x", nbins=5)
+    plain_axes(ax)
