@@ -18,7 +18,7 @@ from wideberth.decide.records import Choice, FactorMap, LimitMap
 from wideberth.quadratic.terms import features
 from wideberth.study.coding import to_actual
 from wideberth.study.records import FloatArray
-from wideberth.surface.explored import contains
+from wideberth.surface.explored import depth
 
 _N_GRID = 41
 _MOST_FACTORS = 3
@@ -88,5 +88,5 @@ def _map(
         up_actual=np.zeros(1) if b is None else actual[:, 0, b],
         desirability=None if y is None else overall(rows.goals, y),
         margins=tuple(margins),
-        explored=contains(problem.explored, grid),
+        depth=depth(problem.explored, grid),
     )

@@ -10,7 +10,6 @@ from dataclasses import dataclass
 from typing import Literal
 
 from wideberth.study.records import (
-    BoolArray,
     Finding,
     FloatArray,
     GuardKind,
@@ -197,8 +196,8 @@ class FactorMap:
         Own units.
     desirability : ndarray or None, shape (n_up, n_across)
         Overall desirability of the fitted means; ``None`` without goals.
-    explored : ndarray of bool, shape (n_up, n_across)
-        Inside the explored region.
+    depth : ndarray, shape (n_up, n_across)
+        How far inside the explored region, below 0 outside.
     """
 
     across: str
@@ -207,4 +206,4 @@ class FactorMap:
     up_actual: FloatArray
     desirability: FloatArray | None
     margins: tuple[LimitMap, ...]
-    explored: BoolArray
+    depth: FloatArray

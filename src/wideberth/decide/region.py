@@ -207,7 +207,7 @@ def _sign_rays(r: int) -> FloatArray:
     if r <= 5:
         grid = np.stack(np.meshgrid(*[[-1.0, 0.0, 1.0]] * r, indexing="ij"), axis=-1)
         rays: FloatArray = grid.reshape(-1, r).astype(np.float64)
-        return rays[np.abs(rays).sum(axis=1) > 0]
+        return np.array(rays[np.abs(rays).sum(axis=1) > 0])
     corners = np.stack(np.meshgrid(*[[-1.0, 1.0]] * r, indexing="ij"), axis=-1).reshape(-1, r)
     return np.concatenate([np.eye(r), -np.eye(r), corners])
 

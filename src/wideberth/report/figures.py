@@ -87,15 +87,15 @@ def draw_map(study: Study, choice: Choice, view: FactorMap, ax: Axes | None = No
             bar = figure.colorbar(filled, ax=ax, pad=0.02, fraction=0.05)
             bar.set_label(label)
             bar.set_ticks(np.linspace(0, top, 4 if smallest is not None else 5).tolist())
-            bar.outline.set_visible(False)  # type: ignore[operator]
+            bar.outline.set_visible(False)
         for i, limit in enumerate(view.margins):
             _limit_line(ax, view, limit, i, study)
-        if view.explored.any() and not view.explored.all():
+        if view.depth.min() < 0 < view.depth.max():
             ax.contour(
                 view.across_actual,
                 view.up_actual,
-                view.explored.astype(float),
-                levels=[0.5],
+                view.depth,
+                levels=[0.0],
                 colors=FAINT,
                 linewidths=1.0,
                 linestyles=[(0, (1, 2))],

@@ -5,6 +5,7 @@ from __future__ import annotations
 import io
 from collections.abc import Iterator
 from contextlib import contextmanager
+from typing import Any
 
 import matplotlib as mpl
 from matplotlib.axes import Axes
@@ -19,7 +20,8 @@ LINES = ("solid", (0, (6, 2)), (0, (2, 2)), (0, (8, 2, 2, 2)), (0, (1, 1)))
 WIDTH = 6.7
 """Width of the text on a printed page, in inches."""
 
-_SETTINGS = {
+# the library types every key of its settings apart; ours are plain texts and numbers
+_SETTINGS: Any = {
     "font.family": "DejaVu Sans",
     "font.size": 8.0,
     "axes.titlesize": 8.5,

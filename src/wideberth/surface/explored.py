@@ -17,6 +17,7 @@ from wideberth.study.coding import to_coded
 from wideberth.study.records import BoolArray, FloatArray, Study
 
 _STILL = 1e-9
+_OUTSIDE = 1e-7
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -74,16 +75,25 @@ def explored_region(study: Study) -> Explored:
     return Explored(low, high, centre, shape, origin, basis, planes, bounds, names)
 
 
-def contains(region: Explored, x: FloatArray, tolerance: float = 1e-7) -> BoolArray:
-    """Tell which coded settings, shape (..., k), were explored; shape (...)."""
+def depth(region: Explored, x: FloatArray) -> FloatArray:
+    """Measure how far inside coded settings, shape (..., k), lie: below 0 outside; shape (...)."""
     away = x - region.centre
     size = np.einsum("...i,ij,...j->...", away, region.shape, away)
-    kept = (x >= region.low - tolerance).all(axis=-1) & (x <= region.high + tolerance).all(axis=-1)
     off = (x - region.origin) - (x - region.origin) @ region.basis @ region.basis.T
-    kept &= (np.abs(off) <= tolerance).all(axis=-1)
-    kept &= (x @ region.planes.T <= region.bounds + tolerance).all(axis=-1)
-    result: BoolArray = np.asarray(kept & (size <= 1.0 + tolerance))
+    parts = [
+        1.0 - size,
+        (x - region.low).min(axis=-1),
+        (region.high - x).min(axis=-1),
+        (region.bounds - x @ region.planes.T).min(axis=-1, initial=np.inf),
+        -np.abs(off).max(axis=-1),
+    ]
+    result: FloatArray = np.min(parts, axis=0)
     return result
+
+
+def contains(region: Explored, x: FloatArray) -> BoolArray:
+    """Tell which coded settings, shape (..., k), were explored; shape (...)."""
+    return np.asarray(depth(region, x) >= -_OUTSIDE)
 
 
 def factor_ranges(region: Explored) -> tuple[FloatArray, FloatArray]:

@@ -1,0 +1,254 @@
+"""The evidence behind page one; each part opens with what it means."""
+
+from __future__ import annotations
+
+from wideberth.chain.record import Record
+from wideberth.fit.records import Model
+from wideberth.report.blocks import Block, Bullets, Drawing, Heading, PageBreak, Paragraph, Table
+from wideberth.report.figures import draw_line, draw_map, draw_margins, draw_residuals
+from wideberth.report.numbers import format_value, with_unit
+from wideberth.report.style import to_svg
+from wideberth.report.wording import guard_sentence, promise
+from wideberth.surface.records import Shape
+
+_METHODS = """
+Coding and least squares: second-order models in coded units, by QR; PRESS after Allen (1974).
+Lack of fit: against runs repeated at the same settings in the same block.
+Geometry: canonical form after Box and Wilson (1951); ridge path after Hoerl (1959), Draper (1963).
+Goals: desirabilities of Derringer and Suich, Journal of Quality Technology 12 (1980), 214-219.
+Guards: confidence, prediction and one-sided tolerance bounds (noncentral t, Owen 1968), made \
+simultaneous over the region by simulating the largest pivotal ratio.
+Explored region: the box of the runs cut with their smallest ellipsoid (Khachiyan 1996).
+Room: limits, constraints and bounds hold at the worst place of setpoint plus or minus tolerance.
+"""
+
+
+def evidence(record: Record) -> tuple[Block, ...]:
+    """Write the blocks that follow page one."""
+    return (
+        PageBreak(),
+        Heading(2, "Evidence"),
+        *_limits(record),
+        *_maps(record),
+        *_goals(record),
+        *_models(record),
+        *_geometry(record),
+        Heading(3, "Methods and sources"),
+        Bullets("", tuple(_METHODS.strip().splitlines())),
+        *_provenance(record),
+    )
+
+
+def _limits(record: Record) -> list[Block]:
+    choice = record.choice
+    if not choice.limits:
+        return []
+    judged = [verdict for verdict in choice.limits if verdict.margin is not None]
+    blocks: list[Block] = [
+        Heading(3, "Limits and their margins"),
+        Paragraph(
+            "A margin is how far a guarded limit is from being broken anywhere in the room; the"
+            " smallest names the limit that rules."
+        ),
+    ]
+    if judged:
+        alt = "; ".join(f"{v.response} {v.side} limit: margin {v.margin:.2f}" for v in judged)
+        figure = to_svg(draw_margins(choice.limits), "margins")
+        blocks.append(Drawing(figure, alt, "Margins of all limits."))
+    rows = tuple(
+        (
+            f"{v.response} {v.side}",
+            guard_sentence(v.guard, v.confidence, v.share),
+            f"{v.factor:.3f}",
+            "not judged" if v.guarded is None else with_unit(format_value(v.guarded), v.unit),
+            v.block or "",
+        )
+        for v in choice.limits
+    )
+    blocks.append(
+        Table(
+            "How each limit was judged",
+            (
+                "Limit",
+                "What the guard asks",
+                "Factor for the search",
+                "Guarded value at worst",
+                "Worst block",
+            ),
+            rows,
+        )
+    )
+    said = promise(choice)
+    return [*blocks, Paragraph(said)] if said else blocks
+
+
+def _maps(record: Record) -> list[Block]:
+    if not record.maps:
+        return []
+    several = len(record.study.numeric) > 3
+    blocks: list[Block] = [
+        Heading(3, "Where the limits run"),
+        Paragraph(
+            "Each map shows two factors through the setpoint, the others held there: the darker,"
+            " the farther from every limit. Lines are where a guarded limit is just met, named;"
+            " dots are runs, the dotted line bounds what was explored, the small box is the room."
+            + (" The three factors that move the margins most are shown." if several else "")
+        ),
+    ]
+    for view in record.maps:
+        draw = draw_map if view.up else draw_line
+        figure = draw(record.study, record.choice, view)
+        names = f"{view.across} and {view.up}" if view.up else view.across
+        limits = ", ".join(f"{limit.response} {limit.side}" for limit in view.margins) or "none"
+        blocks.append(
+            Drawing(
+                to_svg(figure, f"map {view.across} {view.up}"),
+                f"Map of {names} through the setpoint; limits: {limits}.",
+                f"{names} through the setpoint.",
+            )
+        )
+    return blocks
+
+
+def _goals(record: Record) -> list[Block]:
+    choice = record.choice
+    if not choice.goals:
+        return []
+    rows = []
+    for goal in choice.goals:
+        reached = choice.predictions[goal.response].desirability
+        rows.append(
+            (
+                f"{goal.response} [{goal.unit}]" if goal.unit else goal.response,
+                goal.want,
+                " and ".join(f"{value:.5g}" for value in goal.poor),
+                " to ".join(f"{value:.5g}" for value in dict.fromkeys(goal.ideal)),
+                f"{goal.priority:g}",
+                "" if reached is None else f"{reached:.2f}",
+                goal.defaulted or "both stated",
+            )
+        )
+    header = ("Response", "Wanted", "Poor", "Ideal", "Priority", "Desirability", "Bounds")
+    total = "" if choice.desirability is None else f"{choice.desirability:.3f}"
+    return [
+        Heading(3, "Goals"),
+        Paragraph(
+            f"The setting is the best compromise of these goals inside the limits: overall"
+            f" desirability {total} between 0 (useless) and 1 (ideal)."
+        ),
+        Table("Goals as stated and reached", header, tuple(rows)),
+        *([Bullets("Bounds that the setting leans on", choice.edge)] if choice.edge else []),
+    ]
+
+
+def _models(record: Record) -> list[Block]:
+    blocks: list[Block] = [
+        Heading(3, "Models"),
+        Paragraph(
+            "Each measured response is a second-order equation in the coded factors; residuals"
+            " should scatter without pattern and stay within about plus or minus 3."
+        ),
+    ]
+    if any(model.runs for model in record.models.models):
+        alt = "Studentized residuals against fitted values of each measured response."
+        blocks.append(Drawing(to_svg(draw_residuals(record.models), "residuals"), alt, alt))
+    blocks += [_summary(record)]
+    for model in record.models.models:
+        if model.exact:
+            blocks.append(Paragraph(f"{model.response} is known exactly by its formula."))
+            continue
+        blocks.append(_coefficients(model))
+        remarks = tuple(f.text for f in model.findings if f.grade != "fine")
+        if remarks:
+            blocks.append(Bullets("", remarks, tone="doubt"))
+    return blocks
+
+
+def _summary(record: Record) -> Table:
+    rows = []
+    for model in record.models.models:
+        if model.exact:
+            rows.append((model.response, "exact", "", "", "", "", ""))
+            continue
+        lack = model.lack_of_fit
+        rows.append(
+            (
+                f"{model.response} [{model.unit}]" if model.unit else model.response,
+                str(model.n_runs),
+                str(model.df_residual),
+                "" if model.s is None else format_value(model.s, model.s or None),
+                _share(model.r2_adjusted),
+                _share(model.r2_press),
+                model.reasons.get("lack_of_fit", "") if lack is None else f"p {lack.p:.2g}",
+            )
+        )
+    header = ("Response", "Runs", "Residual df", "s", "Adjusted R2", "PRESS R2", "Lack of fit")
+    return Table("How well the models describe the runs", header, tuple(rows))
+
+
+def _share(value: float | None) -> str:
+    return "" if value is None else f"{value:.3f}"
+
+
+def _coefficients(model: Model) -> Table:
+    rows = tuple(
+        (
+            row.term,
+            format_value(row.coded, row.se),
+            "" if row.se is None else format_value(row.se, row.se),
+            "" if row.t is None else f"{row.t:.2f}",
+            "" if row.p is None else ("<0.001" if row.p < 0.001 else f"{row.p:.3f}"),
+        )
+        for row in model.table
+    )
+    unit = f" [{model.unit}]" if model.unit else ""
+    return Table(
+        f"{model.response}{unit}: coefficients in coded units",
+        ("Term", "Coefficient", "Standard error", "t", "p"),
+        rows,
+    )
+
+
+def _geometry(record: Record) -> list[Block]:
+    if not record.shapes:
+        return []
+    return [
+        Heading(3, "Geometry of each response"),
+        Paragraph("Whether a response has its best inside what was tried, and how it bends there."),
+        Table(
+            "Canonical analysis",
+            ("Response", "Nature", "Stationary point", "Fitted mean there", "Curvatures"),
+            tuple(_geometry_row(one) for one in record.shapes),
+        ),
+    ]
+
+
+def _geometry_row(one: Shape) -> tuple[str, ...]:
+    levels = ", ".join(one.levels.values())
+    name = f"{one.response} ({levels})" if levels else one.response
+    place, mean = f"none: {one.reason}", ""
+    if one.stationary is not None:
+        place = ", ".join(
+            f"{factor} {format_value(value)}"
+            for factor, value in one.stationary.setting.items()
+            if isinstance(value, float)
+        )
+        place += "" if one.stationary.explored else " (not explored)"
+        mean = with_unit(format_value(one.stationary.mean), one.unit)
+    curvatures = ", ".join(format_value(e.value) for e in one.eigenvalues)
+    return (name, one.nature, place, mean, curvatures)
+
+
+def _provenance(record: Record) -> list[Block]:
+    study = record.study
+    rows = [(name, digest) for name, digest in study.sha256.items()]
+    rows += [("wideberth", record.version), ("seed", str(record.seed))]
+    rows += list(record.packages.items())
+    return [
+        Heading(3, "Provenance"),
+        Paragraph(
+            "The same study, seed and version give the same bytes; record.json beside this memo"
+            " carries every number at full precision."
+        ),
+        Table("Inputs and versions", ("Item", "Hash or version"), tuple(rows)),
+    ]

@@ -1,0 +1,193 @@
+"""Page one of the memo: what a signer reads, in the order the questions come."""
+
+from __future__ import annotations
+
+from wideberth.chain.record import Record
+from wideberth.decide.records import Choice, Status
+from wideberth.report.blocks import Block, Bullets, Heading, Paragraph, SignOff, Table
+from wideberth.report.numbers import (
+    decimals_of,
+    format_range,
+    format_setting,
+    format_value,
+    with_unit,
+)
+from wideberth.report.wording import (
+    CAUTIONS,
+    STATUS_SENTENCE,
+    guard_sentence,
+    limit_words,
+    margin_words,
+    unknowns,
+)
+from wideberth.study.records import Finding, Study
+
+_VERDICT: dict[Status, str] = {
+    "met": "Supported",
+    "conflict": "Not supported: the limits conflict",
+    "provisional": "Not yet supported: provisional",
+    "unproven": "Not supported: not proven",
+    "unreached": "Not supported: the goals are not reached",
+    "unsupported": "Not supported: the evidence does not carry it",
+}
+
+
+def page_one(record: Record) -> tuple[Block, ...]:
+    """Write the blocks of page one."""
+    study, choice = record.study, record.choice
+    blocks: list[Block] = [
+        Heading(1, f"Setpoint memo: {study.title}"),
+        _identity(record),
+        Heading(2, "Question and verdict"),
+        Paragraph(_question(study)),
+        Paragraph(f"{verdict(record)}. {STATUS_SENTENCE[choice.status]}", tone="lead"),
+    ]
+    blocks += [Bullets("", tuple(c.text for c in choice.conflicts))] if choice.conflicts else []
+    doubts = tuple(finding.text for finding in _spoiling(record))
+    if doubts:
+        blocks.append(Bullets("What weakens this answer", doubts, tone="doubt"))
+    blocks += [_settings(study, choice), _responses(record)]
+    if choice.ruling:
+        blocks.append(Paragraph(f"The limit that rules: {choice.ruling}."))
+    blocks += [
+        Bullets("What is not known", unknowns(study)),
+        Paragraph(_confirmation(choice)),
+        Bullets("Cautions", CAUTIONS),
+        SignOff(
+            (
+                ("Prepared", "the numbers come from the runs named here"),
+                ("Reviewed", "models, limits and guards are right for this purpose"),
+                ("Approved", "the setting may be confirmed within its room"),
+            )
+        ),
+    ]
+    return tuple(blocks)
+
+
+def verdict(record: Record) -> str:
+    """Give the verdict in a few words."""
+    if record.choice.status == "met":
+        missing = set(record.study.notes)
+        conditions = bool(record.choice.edge) or any(f not in missing for f in _spoiling(record))
+        return "Supported with conditions" if conditions else "Supported"
+    return _VERDICT[record.choice.status]
+
+
+def setting_word(choice: Choice) -> str:
+    """Call the setting what it is: recommended only when every limit is met."""
+    return "recommended" if choice.status == "met" else "setting shown"
+
+
+def _spoiling(record: Record) -> tuple[Finding, ...]:
+    found = [f for f in record.choice.findings if f.grade != "fine"]
+    found += [f for f in record.doubts if f.grade != "fine"]
+    return tuple(found)
+
+
+def _identity(record: Record) -> Table:
+    study = record.study
+    context = study.context
+    document = " ".join(part for part in (context.document, context.revision) if part)
+    rows = [
+        ("Product", context.product or "not stated"),
+        ("Equipment", context.equipment or "not stated"),
+        (
+            "Scale run / intended",
+            f"{context.scale_run or 'not stated'} / {context.scale_intended or 'not stated'}",
+        ),
+        (
+            "Document, date",
+            ", ".join(part for part in (document, context.date) if part) or "not stated",
+        ),
+        ("Status, study hash", f"{record.choice.status}, {study.sha256.get('study', '')[:12]}"),
+    ]
+    return Table("", ("", ""), tuple(rows))
+
+
+def _question(study: Study) -> str:
+    wants = {"more": "high", "less": "low", "near": "near its target"}
+    goals = [f"{r.name} {wants[r.goal.want]}" for r in study.responses if r.goal]
+    limits = [r.name for r in study.responses if r.limit]
+    names = _listed([factor.name for factor in study.factors])
+    asked = f"At which {names} should the process run"
+    if goals:
+        asked += f", with {_listed(goals)}"
+    if limits:
+        asked += f", so that the limits on {_listed(limits)} hold"
+    return asked + "?"
+
+
+def _listed(items: list[str]) -> str:
+    return items[0] if len(items) == 1 else f"{', '.join(items[:-1])} and {items[-1]}"
+
+
+def _settings(study: Study, choice: Choice) -> Table:
+    header = ("Factor", setting_word(choice).capitalize(), "Hold within", "Allowed", "Explored")
+    rows: list[tuple[str, ...]] = []
+    units = {factor.name: factor.unit for factor in study.factors}
+    numeric = {factor.name: factor for factor in study.numeric}
+    for name, value in (choice.setpoint or {}).items():
+        around = choice.factors.get(name)
+        if around is None:
+            levels = next(f.levels for f in study.categorical if f.name == name)
+            rows.append((name, str(value), "", ", ".join(levels), ""))
+            continue
+        digits = decimals_of(numeric[name])
+        ends = [around.room, around.allowed, around.explored]
+        texts = [
+            "no tolerance stated" if end is None else f"{end[0]:.{digits}f} to {end[1]:.{digits}f}"
+            for end in ends
+        ]
+        rows.append((_named(name, units[name]), format_setting(study, name, value), *texts))
+    return Table("Settings", header, tuple(rows))
+
+
+def _named(name: str, unit: str) -> str:
+    return f"{name} [{unit}]" if unit else name
+
+
+def _responses(record: Record) -> Table:
+    choice = record.choice
+    header = (
+        "Response",
+        "Expected, 95 % interval",
+        "Single batches, 95 %",
+        "Limit and its guard",
+        "Margin over the room",
+    )
+    rows = []
+    for name, prediction in choice.predictions.items():
+        interval, batch = prediction.mean_interval, prediction.batch_interval
+        half = (interval[1] - interval[0]) / 2 if interval else None
+        spread = (batch[1] - batch[0]) / 2 if batch else None
+        expected = format_value(prediction.mean, half or None)
+        if interval and half:
+            expected += f" ({format_range(*interval, half)})"
+        elif interval is None:
+            expected += " (no interval: no degrees of freedom)"
+        else:
+            expected += " (exact)"
+        single = format_range(*batch, spread) if batch and spread else "none stated"
+        own = [verdict for verdict in choice.limits if verdict.response == name]
+        limits = "; ".join(
+            f"{limit_words(v)}: {guard_sentence(v.guard, v.confidence, v.share)}" for v in own
+        )
+        margins = "; ".join(margin_words(v) for v in own)
+        rows.append((_named(name, prediction.unit), expected, single, limits, margins))
+    for constraint in choice.constraints:
+        word = "at most" if constraint.side == "at_most" else "at least"
+        mark = "met" if constraint.met else "not met"
+        value = with_unit(f"{constraint.value:.4g}", "at its worst in the room")
+        rows.append((constraint.name, value, "", f"{word} {constraint.bound:g}", mark))
+    return Table("What to expect there", header, tuple(rows))
+
+
+def _confirmation(choice: Choice) -> str:
+    if choice.confirmation is not None:
+        return f"Confirm before use: {choice.confirmation.text}. Provisional until then."
+    if choice.status == "met":
+        return (
+            "Confirm before use: run at least three batches at the setpoint; each must fall in the"
+            " single-batch range and meet every limit. Provisional until then."
+        )
+    return "There is no setting to confirm yet."
