@@ -103,18 +103,32 @@ def _supported_terms(
         lost = [i for i in range(len(terms)) if i not in kept]
         if not lost:
             break
-        column = lost[0]
+        terms, finding = _without_aliased(study, response, terms, matrix, kept)
+        found.append(finding)
+    return terms, tuple(found)
+
+
+def _without_aliased(
+    study: Study,
+    response: Response,
+    terms: tuple[Term, ...],
+    matrix: FloatArray,
+    kept: list[int],
+) -> tuple[tuple[Term, ...], Finding]:
+    """Drop the terms of highest degree in every set that cannot be told apart, all of each set."""
+    dropped: set[int] = set()
+    against: set[int] = set()
+    for column in (i for i in range(len(terms)) if i not in kept):
         group = [column, *aliased_with(matrix, column, [i for i in kept if i < column])]
         degrees = {i: degree(terms[i], len(study.numeric)) for i in group}
         highest = max(degrees.values())
-        dropped = [i for i in group if degrees[i] == highest]
-        names = ", ".join(terms[i].name for i in dropped)
-        text = f"{response.name}: the runs cannot tell apart {names}"
-        rest = [terms[i].name for i in group if i not in dropped]
-        text += f" from {', '.join(rest)}" if rest else ""
-        found.append(Finding("look", f"{text}; left out of the model.", response.name))
-        terms = tuple(term for i, term in enumerate(terms) if i not in dropped)
-    return terms, tuple(found)
+        dropped |= {i for i in group if degrees[i] == highest}
+        against |= set(group)
+    names = ", ".join(terms[i].name for i in sorted(dropped))
+    rest = ", ".join(terms[i].name for i in sorted(against - dropped))
+    text = f"{response.name}: the runs cannot tell apart {names}{f' from {rest}' if rest else ''}"
+    left = tuple(term for i, term in enumerate(terms) if i not in dropped)
+    return left, Finding("look", f"{text}; left out of the model.", response.name)
 
 
 def _moving_terms(

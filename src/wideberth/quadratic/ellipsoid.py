@@ -53,9 +53,9 @@ def smallest_ellipsoid(points: FloatArray) -> tuple[FloatArray, FloatArray]:
         if max(above, below) <= _GAP * (r + 1):
             return _ellipsoid(distinct, weights)
         point, kappa = (far, spread[far]) if above >= below else (near, spread[near])
-        step = (kappa - (r + 1)) / ((r + 1) * (kappa - 1.0))
-        if above < below:
-            step = max(step, -weights[near] / (1.0 - weights[near]))
+        drop = -weights[point] / (1.0 - weights[point])
+        # a point whose spread is 1 or less gains from leaving altogether
+        step = drop if kappa <= 1.0 else max((kappa - (r + 1)) / ((r + 1) * (kappa - 1.0)), drop)
         weights = (1.0 - step) * weights
         weights[point] = max(weights[point] + step, 0.0)
         if iteration % 50 == 49:

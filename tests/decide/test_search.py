@@ -1,0 +1,120 @@
+"""The search against brute force: never beaten, never outside, the same every time."""
+
+import numpy as np
+import pytest
+from scipy.optimize import differential_evolution
+
+from support.brute import brute_best, log_d, second_order, slack
+from support.build import central_composite, make_study, more, small_composite
+from wideberth.decide.judge import limit_verdicts, overall_desirability, read_setting
+from wideberth.decide.problem import arena, build_problem
+from wideberth.decide.recommend import recommend
+from wideberth.fit.models import fit
+from wideberth.study.reading import read_study
+from wideberth.study.records import Goal, Limit
+
+GUARDS = ("none", "mean", "batch", "share")
+
+
+def random_models(seed):
+    """A random study: 1 to 5 factors, 2 to 4 responses, mixed goals, one guarded limit."""
+    rng = np.random.default_rng(seed)
+    k = 1 + seed % 5
+    x = central_composite(k, n_centre=4 if k < 5 else 2)
+    p = 1 + 2 * k + k * (k - 1) // 2
+    values, goals, limits = {}, {}, {}
+    n_responses = int(rng.integers(2, 5))
+    for i in range(n_responses):
+        beta = rng.standard_normal(p) * np.r_[0.0, np.full(k, 3.0), np.full(p - 1 - k, 1.5)]
+        y = 50 + second_order(x) @ beta + 0.6 * rng.standard_normal(len(x))
+        low, high = np.quantile(y, [0.15, 0.85])
+        exponents = tuple(float(e) for e in rng.choice([0.5, 1.0, 2.0], 2))
+        priority = float(rng.choice([1.0, 2.0, 3.0]))
+        want = rng.choice(["more", "less", "near"])
+        name = f"y{i}"
+        values[name] = y
+        if want == "near":
+            ideal = ((2 * low + high) / 3, (low + 2 * high) / 3)
+            if rng.random() < 0.5:
+                ideal = ((low + high) / 2,) * 2
+            goals[name] = Goal("near", (low - 2, high + 2), ideal, exponents, priority)
+        else:
+            ends = (low, high) if want == "more" else (high, low)
+            goals[name] = Goal(want, (ends[0],), (ends[1],), (exponents[0],) * 2, priority)
+        if i == n_responses - 1:
+            guard = GUARDS[seed % 4]
+            limits[name] = Limit(None, float(np.quantile(y, 0.75)), guard, 0.95, 0.9)
+            if rng.random() < 0.5:
+                del goals[name]
+    return fit(make_study(x, values, goals=goals, limits=limits))
+
+
+@pytest.mark.parametrize("seed", range(56))
+def test_never_beaten_by_brute_force(seed):
+    models = random_models(seed)
+    choice = recommend(models)
+    assert choice.status in ("met", "provisional", "unproven", "conflict", "unreached")
+    if choice.status != "met":
+        return
+    x = np.array(list(choice.setpoint.values()))
+    assert slack(models, choice, x) >= -1e-6
+    best, _ = brute_best(models, choice)
+    assert best <= choice.desirability + 1e-6
+
+
+def test_most_random_problems_have_an_answer_to_compare():
+    met = sum(recommend(random_models(seed)).status == "met" for seed in range(56))
+    assert met >= 40
+
+
+def test_a_worse_setting_would_be_noticed():
+    models = random_models(2)
+    choice = recommend(models)
+    best, x = brute_best(models, choice)
+    assert best == pytest.approx(choice.desirability, abs=1e-5)
+    assert np.exp(log_d(models, x * 0.9)) < choice.desirability - 1e-6
+
+
+@pytest.mark.parametrize("seed", [0, 1, 2])
+def test_demo_against_differential_evolution(seed):
+    models = fit(read_study("studies/process/hydrogenation"))
+    choice = recommend(models, room=False)
+    study = models.study
+    problem = build_problem(models, seed=1, room=False)
+    rows = arena(problem, (), "simultaneous")
+    bounds = [factor.allowed for factor in study.numeric]
+    names = [factor.name for factor in study.numeric]
+
+    def loss(u):
+        _, x = read_setting(study, dict(zip(names, map(float, u), strict=True)))
+        broken = sum(min(float(row.value(x)), 0.0) for row in rows.hard)
+        broken += min(16.5 - u[1] - 4 * u[0], 0.0)
+        return -(overall_desirability(problem, (), x) or 0.0) - 10 * broken
+
+    found = differential_evolution(loss, bounds, seed=seed, maxiter=60, popsize=12, tol=1e-10)
+    assert -found.fun <= choice.unrounded.desirability + 1e-6
+    assert all(
+        v.met for v in limit_verdicts(problem, rows, read_setting(study, choice.setpoint)[1])
+    )
+
+
+def test_eight_factors():
+    x = small_composite(8)
+    rng = np.random.default_rng(5)
+    y = 20 + x @ np.linspace(2, 0.5, 8) - (x**2) @ np.linspace(0.3, 1.0, 8)
+    z = 10 + x @ np.linspace(0.2, 1.5, 8) + 0.2 * rng.standard_normal(len(x))
+    values = {"y": y + 0.2 * rng.standard_normal(len(x)), "z": z}
+    limits = {"z": Limit(None, 12.0, "batch")}
+    choice = recommend(
+        fit(make_study(x, values, goals={"y": more(15.0, 30.0)}, limits=limits, tolerance=0.05))
+    )
+    assert choice.status == "met"
+    assert choice.limits[0].margin >= 0
+    better = recommend(
+        fit(make_study(x, values, goals={"y": more(15.0, 30.0)}, limits=limits)), room=False
+    )
+    assert better.desirability >= choice.desirability
+
+
+def test_the_same_answer_every_time():
+    assert recommend(random_models(8)) == recommend(random_models(8))
