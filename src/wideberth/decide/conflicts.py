@@ -38,6 +38,14 @@ def smallest_conflict(problem: Problem, mode: Mode) -> Conflict:
     return Conflict(tuple((side.response, side.side, side.value) for side in sides), text)
 
 
+def conflict_of_steps(problem: Problem) -> Conflict:
+    """Say that the limits hold between the settable steps, but on none of them."""
+    return Conflict(
+        tuple((side.response, side.side, side.value) for side in problem.sides),
+        "no setting on the settable steps holds every limit; between the steps one does",
+    )
+
+
 def side_text(response: str, side: Side, value: float, unit: str) -> str:
     """Word one side of a limit: ``yield at least 88 %``."""
     word = "at least" if side == "low" else "at most"

@@ -13,7 +13,7 @@ import numpy as np
 
 from wideberth.decide.aims import BEST, LEAST_POOR, NEAREST, SAFEST, Aim
 from wideberth.decide.confirmation import confirmation_runs
-from wideberth.decide.conflicts import can_hold, side_text, smallest_conflict
+from wideberth.decide.conflicts import can_hold, conflict_of_steps, side_text, smallest_conflict
 from wideberth.decide.edges import edge_sentences
 from wideberth.decide.findings import choice_findings, rests_on_unusable
 from wideberth.decide.judge import (
@@ -28,7 +28,7 @@ from wideberth.decide.judge import (
 from wideberth.decide.problem import Mode, Problem, arena, build_problem
 from wideberth.decide.records import Bare, Choice, Conflict, LimitVerdict, Status
 from wideberth.decide.region import inside
-from wideberth.decide.search import Found, find_best, find_nearest
+from wideberth.decide.search import HOLDS, Found, find_best, find_nearest
 from wideberth.decide.settable import on_steps, settable_grid
 from wideberth.errors import refusal
 from wideberth.fit.records import Models
@@ -120,7 +120,9 @@ def _choose(problem: Problem) -> Choice:
         return _describe(problem, pointwise, "provisional", conflicts)
     status, mode = _why_not(problem)
     if status == "conflict":
-        conflicts = (smallest_conflict(problem, mode),)
+        every = tuple(range(len(problem.sides)))
+        between = can_hold(problem, mode, every)
+        conflicts = (conflict_of_steps(problem) if between else smallest_conflict(problem, mode),)
     if not problem.possible and status == "unproven":
         shown = _best_answer(problem, "means")
         if shown is not None:
@@ -149,7 +151,7 @@ def _best_answer(problem: Problem, mode: Mode) -> _Answer | None:
         if free is None:
             continue
         settable = on_steps(rows, grid, _aim(problem, free), free)
-        if settable is None:
+        if settable is None or settable.worst.min(initial=np.inf) < HOLDS:
             continue
         answer = _Answer(levels, mode, free, settable)
         if best is None or _order(answer) > _order(best):

@@ -6,12 +6,12 @@ and curved upwards. Every face is tried; faces whose curvature cannot hold a min
 
 from __future__ import annotations
 
-from itertools import combinations
+from itertools import combinations, product
 
 import numpy as np
 
 from wideberth.quadratic.stack import Stack
-from wideberth.quadratic.terms import FloatArray, IntArray
+from wideberth.quadratic.terms import BoolArray, FloatArray, IntArray
 
 
 def extreme_over_box(
@@ -68,6 +68,6 @@ def _stationary_on_faces(
     return x[[int(stack.value(x).argmin())]]
 
 
-def _corners(n: int) -> FloatArray:
-    grid: FloatArray = np.stack(np.meshgrid(*[[False, True]] * n, indexing="ij"), axis=-1)
-    return grid.reshape(-1, n)
+def _corners(n: int) -> BoolArray:
+    """Give every choice of low (False) or high (True) for n factors: shape (2**n, n)."""
+    return np.array(list(product((False, True), repeat=n)), dtype=np.bool_).reshape(2**n, n)
