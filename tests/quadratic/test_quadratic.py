@@ -80,11 +80,8 @@ def test_box_extremes_are_never_beaten(k, largest):
         sampled = stack.value(low + rng.random((30000, k)) * (high - low))
         corners = stack.value(np.where(rng.random((200, k)) < 0.5, low, high))
         everything = np.concatenate([sampled, corners])
-        assert (
-            (everything <= value + 1e-12).all() if largest else (everything >= value - 1e-12).all()
-        )
-        near = np.sort(everything if largest else -everything)[-1]
-        assert abs(near - (value if largest else -value)) < 0.5
+        sign = 1 if largest else -1
+        assert (sign * everything).max() <= sign * value + 1e-12
 
 
 def test_box_extreme_inside_a_face():
@@ -116,7 +113,7 @@ def test_sphere_extremes_are_never_beaten_and_satisfy_the_secular_equation(k, la
         sign = 1 if largest else -1
         assert (sign * values).max() <= sign * found.value + 1e-9
         slope = stack.gradient(found.x)
-        mu = found.x @ slope / found.x @ found.x if k == 1 else (found.x @ slope) / 1.3**2
+        mu = (found.x @ slope) / 1.3**2
         assert slope == pytest.approx(mu * found.x, abs=1e-6)
         top = np.linalg.eigvalsh(sign * stack.quad)[-1]
         assert sign * mu / 2 >= top - 1e-7

@@ -79,4 +79,5 @@ def _ellipsoid(points: FloatArray, weights: FloatArray) -> tuple[FloatArray, Flo
     shape = np.linalg.inv(away.T @ (weights[:, None] * away)) / points.shape[1]
     shape = (shape + shape.T) / 2
     # grown by a hair so that every point lies inside exactly
-    return centre, shape / np.einsum("ni,ij,nj->n", away, shape, away).max()
+    size = np.einsum("ni,ij,nj->n", away, shape, away).max()
+    return centre, shape / (size * (1 + 1e-12))
