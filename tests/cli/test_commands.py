@@ -92,7 +92,12 @@ def test_recommend_in_words():
 
 def test_own_setting_and_bare_optimum():
     at = "catalyst=1.0,pressure=6,substrate=130"
-    assert _run("recommend", DEMO, "--at", at, "--quiet").exit_code == 0
+    today = _run("recommend", DEMO, "--at", at, "--quiet")
+    assert today.exit_code == 3
+    assert "hydroxylamine at most 0.95 %: NOT MET" in today.stdout
+    assert "Confirmation: " in today.stdout
+    best = "catalyst=1.38,pressure=9.8,substrate=144"
+    assert _run("recommend", DEMO, "--at", best, "--quiet").exit_code == 0
     high = "catalyst=1.6,pressure=11,substrate=170"
     assert _run("recommend", DEMO, "--at", high, "--quiet").exit_code == 3
     assert _run("recommend", DEMO, "--room", "none", "--quiet").exit_code == 0
@@ -121,7 +126,7 @@ def test_an_answer_that_is_not_met_exits_3(tmp_path):
     statement = STATEMENT.replace("limit = { high = 10 }", 'limit = { high = 1, guard = "none" }')
     result = _run("recommend", write_study(tmp_path, statement), "--quiet")
     assert result.exit_code == 3
-    assert "conflict" in result.stdout
+    assert "holds nowhere in the region" in result.stdout
 
 
 def test_memo_writes_both_files_the_same_every_time(tmp_path):

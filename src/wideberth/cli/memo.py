@@ -27,7 +27,7 @@ def command(
     from wideberth.chain.record import build_record
     from wideberth.cli.progress import ProgressLine
     from wideberth.report.memo import write_memo
-    from wideberth.report.wording import STATUS_SENTENCE
+    from wideberth.report.wording import status_sentence
     from wideberth.study.reading import read_study
 
     study = read_study(study_dir)
@@ -42,5 +42,5 @@ def command(
     else:
         for path in paths:
             click.echo(f"wrote {path}")
-        click.echo(f"{status}: {STATUS_SENTENCE[status]}")
+        click.echo(f"{status}: {status_sentence(record.choice)}")
     return 0 if status == "met" else 3

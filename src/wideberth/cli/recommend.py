@@ -82,14 +82,14 @@ def _setting(study: Study, text: str) -> dict[str, float | str]:
 
 def print_choice(choice: Choice, study: Study) -> None:
     """Print the answer on one screen, what spoils trust first."""
-    from wideberth.report.wording import CAUTIONS, STATUS_SENTENCE, promise
+    from wideberth.report.wording import CAUTIONS, promise, status_sentence
 
     doubts = [finding for finding in choice.findings if finding.grade != "fine"]
     if doubts:
         click.echo("Before anything else:")
         print_findings(doubts)
         click.echo("")
-    click.echo(f"{choice.status}: {STATUS_SENTENCE[choice.status]}")
+    click.echo(f"{choice.status}: {status_sentence(choice)}")
     for conflict in choice.conflicts:
         click.echo(f"  {conflict.text}")
     _print_setting(choice, study)

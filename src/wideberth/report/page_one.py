@@ -14,10 +14,10 @@ from wideberth.report.numbers import (
 )
 from wideberth.report.wording import (
     CAUTIONS,
-    STATUS_SENTENCE,
     guard_sentence,
     limit_words,
     margin_words,
+    status_sentence,
     unknowns,
 )
 from wideberth.study.records import Finding, Study
@@ -40,7 +40,7 @@ def page_one(record: Record) -> tuple[Block, ...]:
         _identity(record),
         Heading(2, "Question and verdict"),
         Paragraph(_question(study)),
-        Paragraph(f"{verdict(record)}. {STATUS_SENTENCE[choice.status]}", tone="lead"),
+        Paragraph(f"{verdict(record)}. {status_sentence(choice)}", tone="lead"),
     ]
     blocks += [Bullets("", tuple(c.text for c in choice.conflicts))] if choice.conflicts else []
     doubts = tuple(finding.text for finding in _spoiling(record))

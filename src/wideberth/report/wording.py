@@ -20,6 +20,21 @@ STATUS_SENTENCE: dict[Status, str] = {
     " explored. The numbers are shown, but they support no setting.",
 }
 
+_ASKED_SENTENCE: dict[Status, str] = {
+    "conflict": "This setting breaks a limit on the fitted means.",
+    "provisional": "This setting meets every guard as one that was fixed before the runs, but not as"
+    " one that was searched for. It is provisional until confirmed.",
+    "unproven": "This setting meets the limits on the fitted means, but the runs do not prove it.",
+    "unreached": "This setting holds the limits but does not reach every goal.",
+}
+
+
+def status_sentence(choice: Choice) -> str:
+    """Say what the status means, for a setting that was found or one that was given."""
+    found = STATUS_SENTENCE[choice.status]
+    return _ASKED_SENTENCE.get(choice.status, found) if choice.asked else found
+
+
 CAUTIONS = (
     "An empirical model is valid only where runs were made; it is no hazard review.",
     (
