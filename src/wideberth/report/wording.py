@@ -22,7 +22,7 @@ STATUS_SENTENCE: dict[Status, str] = {
 
 _ASKED_SENTENCE: dict[Status, str] = {
     "conflict": "This setting breaks a limit on the fitted means.",
-    "provisional": "This setting meets every guard as one that was fixed before the runs, but not as"
+    "provisional": "This setting meets every guard as one fixed before the runs, but not as"
     " one that was searched for. It is provisional until confirmed.",
     "unproven": "This setting meets the limits on the fitted means, but the runs do not prove it.",
     "unreached": "This setting holds the limits but does not reach every goal.",
