@@ -74,7 +74,7 @@ def test_the_setting_shown_in_a_conflict_breaks_the_limits_least():
 def _ladder():
     """The limit on z moved until each answer of the ladder has come up."""
     seen = {}
-    for bound in np.arange(14.0, 5.0, -0.25):
+    for bound in np.arange(9.5, 5.5, -0.08):
         limits = {"z": Limit(None, float(bound), "share", 0.95, 0.95)}
         choice = _choice(limits, {"y": more(10.0, 25.0)})
         seen.setdefault(choice.status, choice)

@@ -91,7 +91,7 @@ def test_the_doorway_offers_what_it_declares():
 def test_the_step_fit_stays_the_step_after_its_room_was_imported():
     code = (
         "import wideberth.fit.records, wideberth as wb; assert callable(wb.fit);"
-        "import wideberth.fit.models as m; assert wb.fit is m.fit"
+        "from wideberth.fit.models import fit; assert wb.fit is fit"
     )
     subprocess.run([sys.executable, "-c", code], check=True)
 
