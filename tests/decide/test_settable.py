@@ -77,3 +77,11 @@ def test_steps_too_coarse_for_any_limit_are_said():
     choice = recommend(fit(study))
     assert choice.status == "conflict"
     assert any("settable" in conflict.text for conflict in choice.conflicts)
+
+
+def test_steps_keep_to_the_directions_that_were_run():
+    x = central_composite(2)
+    x = np.column_stack([x, x[:, 0]])
+    y = x[:, 0] - x[:, 1] ** 2 + 0.1 * np.random.default_rng(0).standard_normal(12)
+    choice = recommend(fit(make_study(x, {"y": y}, goals={"y": more(-2.0, 2.0)}, step="0.3")))
+    assert choice.setpoint["f0"] == choice.setpoint["f2"] == pytest.approx(1.2)

@@ -301,3 +301,25 @@ def test_blocks_that_recur_are_judged_at_the_worst():
     )
     assert choice.limits[0].block == "south"
     assert choice.predictions["z"].mean == pytest.approx(11.5, abs=0.1)
+
+
+def test_only_categorical_factors():
+    level = np.repeat([0, 1, 2], 4)
+    y = level + 0.1 * np.random.default_rng(0).standard_normal(12)
+    study = make_study(
+        np.zeros((12, 0)),
+        {"y": y},
+        goals={"y": more(0.0, 3.0)},
+        limits={"y": Limit(-5.0, None, "batch")},
+        categorical={"c": (("a", "b", "d"), level)},
+    )
+    choice = recommend(fit(study))
+    assert choice.status == "met"
+    assert choice.setpoint == {"c": "d"}
+
+
+def test_a_factor_that_never_moved_stays_where_it_was():
+    x = np.column_stack([central_composite(2), np.full(12, 0.4)])
+    y = x[:, 0] + 0.1 * np.random.default_rng(0).standard_normal(12)
+    choice = recommend(fit(make_study(x, {"y": y}, goals={"y": more(-2.0, 2.0)})))
+    assert choice.setpoint["f2"] == pytest.approx(0.4)

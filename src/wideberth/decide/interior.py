@@ -86,8 +86,10 @@ def refine(
     basis : ndarray, shape (k, r)
         Orthonormal directions that may be moved in.
     """
-    state = _first_state(program, starts.T.copy(), t_starts.T.copy())
     n = starts.shape[0]
+    if not basis.shape[1]:
+        return Refined(starts.copy(), t_starts.copy(), np.ones(n, dtype=np.bool_))
+    state = _first_state(program, starts.T.copy(), t_starts.T.copy())
     x, t = starts.copy(), t_starts.copy()
     converged = np.zeros(n, dtype=np.bool_)
     active = np.arange(n)

@@ -28,14 +28,15 @@ _BEYOND = 0.08
 def factor_maps(problem: Problem, choice: Choice) -> tuple[FactorMap, ...]:
     """Draw the maps through the choice's setting; none without a setting or a numeric factor."""
     study = problem.study
-    if choice.setpoint is None or not study.numeric:
+    moving = np.flatnonzero(np.abs(problem.region.basis).max(axis=1, initial=0.0) > 1e-9)
+    if choice.setpoint is None or not len(moving):
         return ()
     levels, x = read_setting(study, choice.setpoint)
     rows = arena(problem, levels, "simultaneous" if problem.possible else "means")
     span = _spans(problem, x)
-    if len(study.numeric) == 1:
-        return (_map(problem, rows, x, 0, None, span),)
-    shown = sorted(_most_moving(rows, x, span)[:_MOST_FACTORS])
+    if len(moving) == 1:
+        return (_map(problem, rows, x, int(moving[0]), None, span),)
+    shown = sorted([j for j in _most_moving(rows, x, span) if j in moving][:_MOST_FACTORS])
     return tuple(_map(problem, rows, x, a, b, span) for a, b in combinations(shown, 2))
 
 

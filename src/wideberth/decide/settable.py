@@ -70,17 +70,19 @@ def on_steps(arena: Arena, grid: Grid, aim: Aim, found: Found) -> Found | None:
         return None
     total = int(np.prod([len(values) for _, values in grid.axes]))
     if total <= _EVERY and not grid.free.shape[1]:
-        return _best_of(pinned, aim, found.cuts, _combine(grid, found.x, None, total))
+        everything = _near_span(arena.region, grid, _combine(grid, found.x, None, total))
+        return _best_of(pinned, aim, found.cuts, everything)
     best = None
     for around in (found.x, *found.equals):
-        tried = _best_of(pinned, aim, found.cuts, _combine(grid, around, around, _room_for(grid)))
+        near = _combine(grid, around, around, _room_for(grid))
+        tried = _best_of(pinned, aim, found.cuts, _near_span(arena.region, grid, near))
         if tried is not None and (best is None or tried.score > best.score):
             best = tried
     for _ in range(_ROUNDS):
         if best is None:
             return None
-        around = _combine(grid, best.x, best.x, _room_for(grid))
-        better = _best_of(pinned, aim, best.cuts, around)
+        near = _combine(grid, best.x, best.x, _room_for(grid))
+        better = _best_of(pinned, aim, best.cuts, _near_span(arena.region, grid, near))
         if better is None or better.score <= best.score:
             return best
         best = better
@@ -124,8 +126,21 @@ def _combine(grid: Grid, base: FloatArray, around: FloatArray | None, most: int)
     return settings
 
 
+def _near_span(region: Region, grid: Grid, settings: FloatArray) -> FloatArray:
+    """Keep settings that lie within less than half a step of the directions that the runs span."""
+    away = settings - region.origin
+    off = np.abs(away - away @ region.basis @ region.basis.T)
+    reach = np.full(settings.shape[1], 1e-9)
+    for j, values in grid.axes:
+        reach[j] += 0.499 * float(np.diff(values).max(initial=0.0))
+    kept: FloatArray = settings[(off <= reach).all(axis=1)]
+    return kept
+
+
 def _best_of(arena: Arena, aim: Aim, cuts: Cuts, settings: FloatArray) -> Found | None:
     """Take the best setting that stands at its worst places in the room."""
+    if not len(settings):
+        return None
     for _ in range(_ROUNDS):
         tried = settings
         if arena.region.basis.shape[1]:

@@ -89,7 +89,8 @@ def simultaneous_factor(
     highest /= draws.spread
     # only the upper tail can reach the quantile, so only it is worth polishing
     tail = np.argsort(-highest, kind="stable")[: int(_POLISHED * N_DRAWS)]
-    for i, mapped in enumerate(maps):
+    movable = maps if region.basis.shape[1] else ()
+    for i, mapped in enumerate(movable):
         chosen = tail[which[tail] == i]
         if len(chosen):
             start = settings[where[chosen]]

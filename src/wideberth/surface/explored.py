@@ -82,10 +82,10 @@ def depth(region: Explored, x: FloatArray) -> FloatArray:
     off = (x - region.origin) - (x - region.origin) @ region.basis @ region.basis.T
     parts = [
         1.0 - size,
-        (x - region.low).min(axis=-1),
-        (region.high - x).min(axis=-1),
+        (x - region.low).min(axis=-1, initial=np.inf),
+        (region.high - x).min(axis=-1, initial=np.inf),
         (region.bounds - x @ region.planes.T).min(axis=-1, initial=np.inf),
-        -np.abs(off).max(axis=-1),
+        -np.abs(off).max(axis=-1, initial=0.0),
     ]
     result: FloatArray = np.min(parts, axis=0)
     return result
