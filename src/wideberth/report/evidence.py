@@ -130,12 +130,12 @@ def _goals(record: Record) -> list[Block]:
         )
     header = ("Response", "Wanted", "Poor", "Ideal", "Priority", "Desirability", "Bounds")
     total = "" if choice.desirability is None else f"{choice.desirability:.3f}"
+    lead = "The best compromise of these goals inside the limits reaches"
+    if choice.status != "met":
+        lead = "On these goals the setting shown reaches"
     return [
         Heading(3, "Goals"),
-        Paragraph(
-            f"The setting is the best compromise of these goals inside the limits: overall"
-            f" desirability {total} between 0 (useless) and 1 (ideal)."
-        ),
+        Paragraph(f"{lead} an overall desirability of {total}, between 0 (useless) and 1 (ideal)."),
         Table("Goals as stated and reached", header, tuple(rows)),
         *([Bullets("Bounds that the setting leans on", choice.edge)] if choice.edge else []),
     ]

@@ -32,8 +32,11 @@ _SHADED_TO = 6.0
 
 
 def shortened(name: str, longest: int = 26) -> str:
-    """Cut a long name so that it fits on an axis."""
-    return name if len(name) <= longest else name[: longest - 1] + "…"
+    """Cut a long name so that it fits on an axis; its end often tells it from others."""
+    if len(name) <= longest:
+        return name
+    tail = longest // 2
+    return f"{name[: longest - tail - 1]}…{name[-tail:]}"
 
 
 def axis_label(name: str, unit: str) -> str:

@@ -73,6 +73,8 @@ def margin_words(verdict: LimitVerdict) -> str:
 
 def promise(choice: Choice) -> str:
     """State what a simultaneous guard promises, and what it does not; empty without one."""
+    if choice.status != "met":
+        return ""
     guarded = [v for v in choice.limits if v.guard != "none" and v.point == "chosen"]
     if not guarded:
         return ""
