@@ -12,7 +12,7 @@ from wideberth.fit.records import surface
 from wideberth.quadratic.ellipsoid import smallest_ellipsoid
 from wideberth.study.records import Constraint
 from wideberth.surface.canonical import canonical
-from wideberth.surface.explored import contains, explored_region, factor_ranges
+from wideberth.surface.explored import contains, depth, explored_region, factor_ranges
 from wideberth.surface.ridge import shape
 
 
@@ -37,6 +37,7 @@ def test_a_rotatable_design_explores_a_ball(k):
     assert region.shape == pytest.approx(np.eye(k) / far, abs=1e-6)
     assert contains(region, x).all()
     assert not contains(region, np.full(k, np.sqrt(far / k) * 1.001))
+    assert depth(region, np.zeros(k)) == pytest.approx(1.0)
     low, high = factor_ranges(region)
     assert high == pytest.approx(np.full(k, np.abs(x).max()), rel=1e-6)
     assert low == pytest.approx(-high, rel=1e-6)

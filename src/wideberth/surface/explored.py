@@ -79,13 +79,14 @@ def depth(region: Explored, x: FloatArray) -> FloatArray:
     """Measure how far inside coded settings, shape (..., k), lie: below 0 outside; shape (...)."""
     away = x - region.centre
     size = np.einsum("...i,ij,...j->...", away, region.shape, away)
-    off = (x - region.origin) - (x - region.origin) @ region.basis @ region.basis.T
+    rest = (x - region.origin) - (x - region.origin) @ region.basis @ region.basis.T
+    off = np.abs(rest).max(axis=-1, initial=0.0)
     parts = [
         1.0 - size,
         (x - region.low).min(axis=-1, initial=np.inf),
         (region.high - x).min(axis=-1, initial=np.inf),
         (region.bounds - x @ region.planes.T).min(axis=-1, initial=np.inf),
-        -np.abs(off).max(axis=-1, initial=0.0),
+        np.where(off > _OUTSIDE, -off, np.inf),
     ]
     result: FloatArray = np.min(parts, axis=0)
     return result
