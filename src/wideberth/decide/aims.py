@@ -134,10 +134,10 @@ def peak(curve: FloatArray) -> Aim:
     return Aim(largest_value(curve), value, value, _just_below(value), holds_limits=False)
 
 
-def tie_break(goal_floor: FloatArray, least_log_d: float, *, by_margin: bool) -> Aim:
+def tie_break(goal_floor: FloatArray, least_log_d: FloatArray | float, *, by_margin: bool) -> Aim:
     """Among settings that keep log D, aim at the one farthest from trouble.
 
-    ``goal_floor`` (n_goals,) is what each goal's target must keep in the refinement; settings
+    ``goal_floor`` (n_goals, ...) is what each goal's target must keep in the refinement; settings
     below ``least_log_d`` score minus infinity.
     """
     height = _smallest_margin if by_margin else _smallest_uncapped

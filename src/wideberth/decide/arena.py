@@ -7,7 +7,7 @@ the response's range over the region.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -16,7 +16,7 @@ from wideberth.decide.guards import SmoothGuard
 from wideberth.decide.records import ResolvedGoal
 from wideberth.decide.region import Region, Room
 from wideberth.quadratic.terms import features
-from wideberth.study.records import FloatArray, Side
+from wideberth.study.records import FloatArray, IntArray, Side
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -30,9 +30,10 @@ class HardRow:
     limit : int or None
         Index of the limit side among the study's; the blocks of one side share it. ``None`` for
         the ellipsoid, which is never relaxed.
-    curve : ndarray, shape (p,)
-        For a high limit ``(limit - mean) / scale``, mirrored for a low one.
-    weight : float
+    curve : ndarray, shape (p,) or (N, p)
+        For a high limit ``(limit - mean) / scale``, mirrored for a low one; one each where
+        every setting has a draw of its own.
+    weight : float or ndarray, shape (N,)
         ``c * s / scale``; 0 without a guard.
     guard : SmoothGuard or None
     covariance : ndarray, shape (p, p)
@@ -43,7 +44,7 @@ class HardRow:
 
     limit: int | None
     curve: FloatArray
-    weight: float
+    weight: FloatArray | float
     guard: SmoothGuard | None
     covariance: FloatArray
     block: str | None = None
@@ -51,11 +52,18 @@ class HardRow:
     def value(self, x: FloatArray) -> FloatArray:
         """Evaluate at coded settings of shape (..., k); shape (...)."""
         terms = features(x)
-        value: FloatArray = terms @ self.curve
+        value: FloatArray = np.einsum("...p,...p->...", terms, self.curve)
         if self.guard is None:
             return value
         leverage = np.einsum("...p,...p->...", terms @ self.covariance, terms)
         return value - self.weight * self.guard.value(leverage)
+
+    def take(self, draws: IntArray) -> HardRow:
+        """Pick draws, one for each setting to come; a row shared by all stays as it is."""
+        if self.curve.ndim == 1:
+            return self
+        weight = np.broadcast_to(np.asarray(self.weight), len(self.curve))[draws]
+        return replace(self, curve=self.curve[draws], weight=weight)
 
 
 @dataclass(frozen=True, slots=True)
@@ -71,6 +79,9 @@ class LimitSide:
 class Arena:
     """The problem at one combination of levels.
 
+    Where goals and limits carry draws, the settings handed to the functions below are paired with
+    them: setting n is judged by draw n.
+
     Attributes
     ----------
     levels : tuple of int
@@ -78,7 +89,7 @@ class Arena:
     region : Region
         Its planes already moved inwards by the room.
     goals : tuple of ResolvedGoal
-    goal_means : ndarray, shape (n_goals, p)
+    goal_means : ndarray, shape (n_goals, p) or (n_goals, N, p)
         Fitted means of the responses with a goal, block average.
     hard : tuple of HardRow
     """
@@ -94,6 +105,15 @@ class Arena:
     def n_factors(self) -> int:
         """Number of numeric factors k."""
         return len(self.region.origin)
+
+    def take(self, draws: IntArray) -> Arena:
+        """Pick draws, one for each setting to come."""
+        means = self.goal_means
+        return replace(
+            self,
+            goal_means=means if means.ndim == 2 else means[:, draws],
+            hard=tuple(row.take(draws) for row in self.hard),
+        )
 
     @property
     def limits(self) -> tuple[int, ...]:
@@ -131,7 +151,7 @@ def limit_margins(arena: Arena, values: FloatArray) -> FloatArray:
 
 def goal_values(arena: Arena, x: FloatArray) -> FloatArray:
     """Evaluate the fitted means of the responses with a goal: (N, k) to (N, n_goals)."""
-    result: FloatArray = features(x) @ arena.goal_means.T
+    result: FloatArray = np.einsum("...p,g...p->...g", features(x), arena.goal_means)
     return result
 
 

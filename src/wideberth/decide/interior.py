@@ -102,6 +102,7 @@ def refine(
             if done.all():
                 return Refined(x, t, converged)
             active, state = active[~done], state.take(~done)
+            program = program.take(~done)
             at = _linearise(program, state)
         state = _step(program, state, at, basis)
     x[active], t[active] = state.x.T, state.t.T

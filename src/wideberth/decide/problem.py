@@ -20,6 +20,7 @@ from wideberth.decide.records import ResolvedGoal
 from wideberth.decide.region import Region, Room, candidates, room_of, search_region, with_room
 from wideberth.decide.search import find_peak
 from wideberth.decide.simultaneous import simultaneous_factor
+from wideberth.fit.draws import Draws
 from wideberth.fit.records import Model, Models, design_map, surface
 from wideberth.quadratic.terms import features, n_terms
 from wideberth.study.records import Response, Study
@@ -94,7 +95,7 @@ def build_problem(models: Models, *, seed: int, room: bool) -> Problem:
     nil = np.zeros(len(study.numeric))
     kept = stated if room else Room(nil, nil)
     combinations = tuple(product(*(range(len(f.levels)) for f in study.categorical)))
-    bare = tuple(_bare_arena(region, levels) for levels in combinations)
+    bare = tuple(bare_arena(region, levels) for levels in combinations)
     return Problem(
         models=models,
         explored=explored,
@@ -125,7 +126,7 @@ def arena(
     goals = problem.goals
     means = [surface(models[goal.response], study, levels=levels).coefficients for goal in goals]
     p = n_terms(len(study.numeric))
-    bare = _bare_arena(problem.tight, levels)
+    bare = bare_arena(problem.tight, levels)
     return replace(
         bare,
         room=problem.room,
@@ -133,6 +134,23 @@ def arena(
         goal_means=np.array(means).reshape(len(goals), p),
         hard=(*rows, *bare.hard),
     )
+
+
+def drawn_arena(problem: Problem, levels: tuple[int, ...], mode: Mode, draws: Draws) -> Arena:
+    """Write the rows of every draw at one combination of levels, without room.
+
+    Each draw has its own coefficients and its own s in the guards; what does not vary is repeated.
+    """
+    study, models, n = problem.study, problem.models, draws.n_draws
+    sides = range(len(problem.sides))
+    rows = [row for limit in sides for row in _limit_rows(problem, limit, levels, mode, draws)]
+    p = n_terms(len(study.numeric))
+    means = np.empty((len(problem.goals), n, p))
+    for i, goal in enumerate(problem.goals):
+        model = models[goal.response]
+        means[i] = draws.of(model) @ design_map(model, study, levels=levels).T
+    bare = bare_arena(problem.region, levels)
+    return replace(bare, goals=problem.goals, goal_means=means, hard=(*rows, *bare.hard))
 
 
 def _limit_sides(study: Study) -> tuple[LimitSide, ...]:
@@ -152,21 +170,33 @@ def judged_blocks(model: Model, study: Study) -> tuple[int | None, ...]:
     return (None,)
 
 
-def _limit_rows(problem: Problem, limit: int, levels: tuple[int, ...], mode: Mode) -> list[HardRow]:
+def _limit_rows(
+    problem: Problem,
+    limit: int,
+    levels: tuple[int, ...],
+    mode: Mode,
+    draws: Draws | None = None,
+) -> list[HardRow]:
     study, side = problem.study, problem.sides[limit]
     model, guarding = problem.models[side.response], problem.guarding[side.response]
     sign = 1.0 if side.side == "high" else -1.0
     rows = []
     for block in judged_blocks(model, study):
         at = surface(model, study, levels=levels, block=block)
-        curve = -sign * at.coefficients / guarding.scale
-        curve[0] += sign * side.value / guarding.scale
+        mean, s = at.coefficients, np.array(at.s)
+        if draws is not None:
+            mapped = design_map(model, study, levels=levels, block=block)
+            everyone = (draws.n_draws, len(mean))
+            mean = np.broadcast_to(draws.of(model) @ mapped.T, everyone)
+            s = np.broadcast_to(draws.sd(model), draws.n_draws)
+        curve = -sign * mean / guarding.scale
+        curve[..., 0] += sign * side.value / guarding.scale
         factor = guarding.factor if mode == "simultaneous" else 1.0
         rows.append(
             HardRow(
                 limit=limit,
                 curve=curve,
-                weight=factor * at.s / guarding.scale,
+                weight=factor * s / guarding.scale,
                 guard=None if mode == "means" else guarding.smooth,
                 covariance=at.covariance,
                 block=None if block is None else study.runs.blocks[block],
@@ -175,7 +205,7 @@ def _limit_rows(problem: Problem, limit: int, levels: tuple[int, ...], mode: Mod
     return rows
 
 
-def _bare_arena(region: Region, levels: tuple[int, ...]) -> Arena:
+def bare_arena(region: Region, levels: tuple[int, ...]) -> Arena:
     """Region alone: no goals, no limits, no room."""
     k = len(region.origin)
     nil, p = np.zeros(k), n_terms(k)

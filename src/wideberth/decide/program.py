@@ -5,17 +5,18 @@ logarithm or the identity, subject to rows ``G_r(x) - slack_r * t_{i(r)} ** powe
 caps, limits with any guard, the ellipsoid, least violation and largest smallest margin are all
 rows of this kind, so one search serves every question.
 
-Settings are batched with the candidate last: x has shape (k, N), row values (R, N).
+Settings are batched with the candidate last: x has shape (k, N), row values (R, N). Rows may be
+shared by all candidates or belong to one each, as when every candidate is a start for its own
+draw of the coefficients.
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from wideberth.decide.guards import SmoothGuard
-from wideberth.quadratic.stack import Stack
 from wideberth.quadratic.terms import feature_gradients, features, pairs
 from wideberth.study.records import BoolArray, FloatArray, IntArray
 
@@ -24,13 +25,49 @@ from wideberth.study.records import BoolArray, FloatArray, IntArray
 class GuardedPart:
     """What a guard takes off one row: ``weight * K(h(x + shift))``.
 
-    ``covariance`` (p, p) is unscaled; the shift of a worst point in the room is folded into it.
+    ``weight`` is (1,) or (N,); ``covariance`` (p, p) is unscaled, the shift of a worst point in
+    the room folded into it.
     """
 
     row: int
-    weight: float
+    weight: FloatArray
     guard: SmoothGuard
     covariance: FloatArray
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Curves:
+    """The quadratic parts of R rows, candidate last: one for all (M = 1) or one each (M = N).
+
+    Attributes
+    ----------
+    const : ndarray, shape (R, M)
+    lin : ndarray, shape (R, k, M)
+    quad : ndarray, shape (R, k, k, M)
+        Symmetric; the Hessian is ``2 quad``.
+    """
+
+    const: FloatArray
+    lin: FloatArray
+    quad: FloatArray
+
+    @classmethod
+    def from_coefficients(cls, coefficients: FloatArray, n_factors: int) -> Curves:
+        """Build from coefficients in the order of the terms, shape (R, M, p)."""
+        k = n_factors
+        last = coefficients.transpose(0, 2, 1)
+        quad = np.zeros((len(last), k, k, last.shape[2]))
+        diagonal = np.arange(k)
+        quad[:, diagonal, diagonal] = last[:, 1 + k : 1 + 2 * k]
+        first, second = (np.array(index, dtype=int) for index in pairs(k))
+        quad[:, first, second] = quad[:, second, first] = last[:, 1 + 2 * k :] / 2
+        return cls(last[:, 0].copy(), last[:, 1 : 1 + k].copy(), quad)
+
+    def take(self, keep: BoolArray) -> Curves:
+        """Keep some candidates' rows."""
+        if self.const.shape[1] == 1:
+            return self
+        return Curves(self.const[:, keep], self.lin[:, :, keep], self.quad[..., keep])
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -42,7 +79,7 @@ class Program:
     weights : ndarray, shape (T,)
     logarithmic : ndarray of bool, shape (T,)
         phi is the logarithm where true, the identity elsewhere.
-    curves : Stack, leading shape (R,)
+    curves : Curves
         The quadratic part of every row.
     target : ndarray of int, shape (R,)
         Which t the row carries, -1 for none.
@@ -55,7 +92,7 @@ class Program:
 
     weights: FloatArray
     logarithmic: BoolArray
-    curves: Stack
+    curves: Curves
     target: IntArray
     power: FloatArray
     guards: tuple[GuardedPart, ...]
@@ -65,17 +102,15 @@ class Program:
     @property
     def n_factors(self) -> int:
         """Number of factors k."""
-        return self.curves.n_factors
+        return int(self.curves.lin.shape[1])
 
-
-def row_values(program: Program, x: FloatArray) -> FloatArray:
-    """Evaluate G at settings, shape (k, N): shape (R, N)."""
-    terms = features(x.T)
-    values: FloatArray = program.curves.coefficients() @ terms.T
-    for part in program.guards:
-        leverage = np.einsum("np,np->n", terms @ part.covariance, terms)
-        values[part.row] -= part.weight * part.guard.value(leverage)
-    return values
+    def take(self, keep: BoolArray) -> Program:
+        """Keep some candidates' rows."""
+        guards = tuple(
+            part if len(part.weight) == 1 else replace(part, weight=part.weight[keep])
+            for part in self.guards
+        )
+        return replace(self, curves=self.curves.take(keep), guards=guards)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -98,9 +133,9 @@ class Expansion:
 def expand(program: Program, x: FloatArray) -> Expansion:
     """Evaluate the rows with their derivatives at settings, shape (k, N)."""
     curves = program.curves
-    bent = np.tensordot(curves.quad, x, axes=1)
-    slopes = curves.lin[:, :, None] + 2 * bent
-    values = curves.const[:, None] + np.einsum("rkn,kn->rn", curves.lin[:, :, None] + bent, x)
+    bent = np.einsum("rkjn,jn->rkn", curves.quad, x)
+    slopes = curves.lin + 2 * bent
+    values = curves.const + np.einsum("rkn,kn->rn", curves.lin + bent, x)
     curvatures = []
     if program.guards:
         terms, jacobian = features(x.T), feature_gradients(x.T)
@@ -114,7 +149,7 @@ def expand(program: Program, x: FloatArray) -> Expansion:
 
 def weighted_curvature(program: Program, at: Expansion, multipliers: FloatArray) -> FloatArray:
     """Sum the rows' Hessians with multipliers, shape (R, N): shape (k, k, N)."""
-    total: FloatArray = 2 * np.tensordot(program.curves.quad, multipliers, axes=(0, 0))
+    total: FloatArray = 2 * np.einsum("rkjn,rn->kjn", program.curves.quad, multipliers)
     for row, curvature in at.guard_curvatures:
         total += multipliers[row] * curvature
     return total

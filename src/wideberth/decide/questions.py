@@ -13,9 +13,8 @@ import numpy as np
 from wideberth.decide.arena import Arena, Cuts, HardRow
 from wideberth.decide.desirability import shares_of_priority, sides
 from wideberth.decide.guards import SmoothGuard
-from wideberth.decide.program import GuardedPart, Program
+from wideberth.decide.program import Curves, GuardedPart, Program
 from wideberth.decide.records import ResolvedGoal
-from wideberth.quadratic.stack import Stack
 from wideberth.quadratic.terms import n_terms, shift_map
 from wideberth.study.records import FloatArray
 
@@ -30,7 +29,7 @@ class _Row:
     curve: FloatArray
     target: int = _NO_TARGET
     power: float = 1.0
-    weight: float = 0.0
+    weight: FloatArray | float = 0.0
     guard: SmoothGuard | None = None
     covariance: FloatArray | None = None
 
@@ -62,7 +61,7 @@ def least_violation(arena: Arena, cuts: Cuts) -> Program:
 
 
 def largest_margin(arena: Arena, cuts: Cuts, goal_floor: FloatArray | None = None) -> Program:
-    """Maximise the smallest margin; with a floor (n_goals,), keep every goal's target above it."""
+    """Maximise the smallest margin; with a floor (n_goals, ...), keep every target above it."""
     rows = _hard_rows(arena, cuts, lambda row: _NO_TARGET if row.limit is None else 0)
     rows += _floor_rows(arena, goal_floor)
     return _program(arena, rows, np.ones(1))
@@ -77,7 +76,7 @@ def largest_uncapped(arena: Arena, cuts: Cuts, goal_floor: FloatArray | None = N
 
 
 def largest_value(curve: FloatArray) -> Question:
-    """Maximise one quadratic, coefficients (p,), over the region without regard to limits."""
+    """Maximise a quadratic, (p,) or one a start (N, p), in the region, limits disregarded."""
 
     def question(arena: Arena, cuts: Cuts) -> Program:
         ellipsoid = _hard_rows(arena, cuts, lambda _: _NO_TARGET, only_region=True)
@@ -93,7 +92,7 @@ def _goal_sides(arena: Arena, goal: int) -> list[tuple[FloatArray, float]]:
     result = []
     for side in parts:
         curve = side.slope * arena.goal_means[goal]
-        curve[0] += side.offset
+        curve[..., 0] += side.offset
         result.append((curve, steepest / side.exponent))
     return result
 
@@ -113,9 +112,9 @@ def _is_point_target(goal: ResolvedGoal) -> bool:
     return goal.want == "near" and goal.ideal[0] == goal.ideal[1]
 
 
-def _constant(arena: Arena, value: float) -> FloatArray:
-    curve = np.zeros(n_terms(arena.n_factors))
-    curve[0] = value
+def _constant(arena: Arena, value: FloatArray | float) -> FloatArray:
+    curve = np.zeros((*np.shape(value), n_terms(arena.n_factors)))
+    curve[..., 0] = value
     return curve
 
 
@@ -128,7 +127,7 @@ def _hard_rows(
             continue
         for shift in (np.zeros(arena.n_factors), *shifts):
             mapped = shift_map(shift)
-            curve = mapped.T @ row.curve - _constant(arena, _STRICT)
+            curve = row.curve @ mapped - _constant(arena, _STRICT)
             covariance = mapped.T @ row.covariance @ mapped
             rows.append(_Row(curve, target(row), 1.0, row.weight, row.guard, covariance))
     return rows
@@ -140,14 +139,18 @@ def _program(
     region = arena.region
     # a plane along which nothing can move bounds nothing and would have no interior
     moves = np.abs(region.planes @ region.basis).max(axis=1, initial=0.0) > 1e-9
+    n_draws = max(np.atleast_2d(row.curve).shape[0] for row in rows)
+    shape = (n_draws, n_terms(arena.n_factors))
     return Program(
         weights=weights,
         logarithmic=np.full(len(weights), logarithmic),
-        curves=Stack.from_coefficients(np.stack([row.curve for row in rows]), arena.n_factors),
+        curves=Curves.from_coefficients(
+            np.stack([np.broadcast_to(row.curve, shape) for row in rows]), arena.n_factors
+        ),
         target=np.array([row.target for row in rows], dtype=np.int64),
         power=np.array([row.power for row in rows]),
         guards=tuple(
-            GuardedPart(i, row.weight, row.guard, row.covariance)
+            GuardedPart(i, np.atleast_1d(row.weight), row.guard, row.covariance)
             for i, row in enumerate(rows)
             if row.guard is not None and row.covariance is not None
         ),

@@ -13,7 +13,7 @@ import numpy as np
 from scipy.special import ndtri
 
 from wideberth.decide.interior import refine
-from wideberth.decide.program import Program
+from wideberth.decide.program import Curves, Program, expand
 from wideberth.errors import refusal
 from wideberth.quadratic.stack import Stack
 from wideberth.study.coding import to_coded
@@ -168,7 +168,7 @@ def candidates(region: Region, n: int) -> FloatArray:
     r = region.basis.shape[1]
     if r == 0:
         return region.middle[None, :].copy()
-    spread = _even_points(n, r + 1)
+    spread = even_points(n, r + 1)
     rays = ndtri(0.5 + 0.9999 * (spread[:, :r] - 0.5))
     # a third exactly on the edge, where optima often sit, the rest spread over the volume
     depth = np.where(np.arange(n) % 3 == 0, 1.0, spread[:, r] ** (1.0 / r))
@@ -190,7 +190,7 @@ def _allowed(study: Study, explored: Explored) -> tuple[FloatArray, FloatArray]:
     return low, high
 
 
-def _even_points(n: int, dimension: int) -> FloatArray:
+def even_points(n: int, dimension: int) -> FloatArray:
     """Additive recurrence on the generalised golden ratio (Roberts' R sequence, from memory)."""
     ratio = 2.0
     for _ in range(64):
@@ -228,7 +228,7 @@ def _centred(region: Region, nothing_left: str, study: Study) -> Region:
     program = Program(
         weights=np.ones(1),
         logarithmic=np.zeros(1, dtype=np.bool_),
-        curves=Stack.from_coefficients(coefficients, k),
+        curves=Curves.from_coefficients(coefficients[:, None, :], k),
         target=np.zeros(len(coefficients), dtype=np.int64),
         power=np.ones(len(coefficients)),
         guards=(),
@@ -236,7 +236,7 @@ def _centred(region: Region, nothing_left: str, study: Study) -> Region:
         bounds=np.zeros(0),
     )
     best = refine(program, region.origin[None, :], np.array([[-1.0]]), region.basis)
-    deepest = program.curves.value(best.x[0]).min()
+    deepest = expand(program, best.x.T).values.min()
     if deepest < -_OUTSIDE:
         raise refusal(nothing_left, "study.toml", "widen allowed, the constraints or the region")
     return replace(region, middle=best.x[0])

@@ -1,0 +1,1 @@
+"""Living with a setpoint: the proven window, settings that wander, runs beyond the edge."""

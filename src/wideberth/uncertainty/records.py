@@ -1,0 +1,100 @@
+"""The answer of ``uncertainty`` as frozen records; settings and responses in own units."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+from wideberth.decide.conformance import Conformance
+from wideberth.decide.problem import Mode
+from wideberth.study.records import Finding, FloatArray, Setting
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class OptimumRegion:
+    """Where the true optimum may lie: an ellipsoid around the draws' optima, cut with the region.
+
+    Attributes
+    ----------
+    level : float
+    determined : bool
+        False when the region fills more than half of what may be searched: the runs do not tell
+        where the optimum is.
+    share_of_explored : float
+        Of the volume that may be searched.
+    ranges : mapping
+        Smallest and largest value of each numeric factor anywhere in the region, own units.
+    centre : ndarray, shape (k,); shape : ndarray, shape (k, k)
+        Coded: ``(x - centre)' shape (x - centre) <= 1``; nil in directions not spanned.
+    """
+
+    level: float
+    determined: bool
+    share_of_explored: float
+    ranges: Mapping[str, tuple[float, float]]
+    centre: FloatArray
+    shape: FloatArray
+
+
+@dataclass(frozen=True, slots=True)
+class PossibleLoss:
+    """What the setting loses in overall desirability against each draw's best one."""
+
+    median: float
+    bound: float
+
+
+@dataclass(frozen=True, slots=True)
+class Optimism:
+    """How much too rosy the optimum of fitted equations looks, and what is left of it.
+
+    ``desirability`` is the average by which draws' optima flatter D; ``corrected`` the setpoint's
+    D less that, between 0 and 1. ``responses`` give for each response the same two numbers in its
+    unit: what to take off the fitted mean, and the mean without it.
+    """
+
+    desirability: float
+    corrected: float
+    responses: Mapping[str, tuple[float, float]]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Uncertainty:
+    """How sure a choice is.
+
+    Attributes
+    ----------
+    draws : int
+        0 when nothing can be drawn; ``reason`` says why.
+    setting : Setting or None
+        What loss and conformance are of.
+    mode : Mode
+        How limits were guarded in the draws.
+    feasible_share : float or None
+        Of the draws, those in which some setting holds every guarded limit.
+    edge_share : float or None
+        Of the feasible draws, those whose optimum lies on the edge of what may be searched.
+    level_shares : mapping
+        For each combination of levels of categorical factors, the share of draws that prefer it.
+    region, possible_loss, optimism : records or None
+    conformance : Conformance or None
+        Setting error included where tolerances are stated; ``None`` without limits.
+    conformance_exact_setting : Conformance or None
+        As if every batch were run at exactly the setting.
+    """
+
+    draws: int
+    seed: int
+    setting: Setting | None
+    mode: Mode
+    feasible_share: float | None
+    edge_share: float | None
+    level_shares: Mapping[str, float]
+    region: OptimumRegion | None
+    possible_loss: PossibleLoss | None
+    conformance: Conformance | None
+    conformance_exact_setting: Conformance | None
+    setting_error_included: bool
+    optimism: Optimism | None
+    findings: tuple[Finding, ...]
+    reason: str
