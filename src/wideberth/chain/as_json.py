@@ -15,8 +15,10 @@ from wideberth.chain.record import Record
 from wideberth.decide.records import Choice
 from wideberth.errors import Fault
 from wideberth.fit.records import Model, Models
+from wideberth.operate.records import Robustness, Window
 from wideberth.study.records import Finding, Study
 from wideberth.surface.records import Shape
+from wideberth.uncertainty.records import Uncertainty
 
 Json = dict[str, Any]
 
@@ -79,6 +81,21 @@ def recommend_json(choice: Choice, study: Study) -> Json:
     return {**head, **{key: value for key, value in content.items() if key != "seed"}}
 
 
+def uncertainty_json(sure: Uncertainty, study: Study) -> Json:
+    """Give the answer of ``uncertainty``."""
+    return {**_head("uncertainty", study), **_plain(sure)}
+
+
+def window_json(box: Window, study: Study) -> Json:
+    """Give the answer of ``window``."""
+    return {**_head("window", study), **_plain(box)}
+
+
+def robustness_json(answer: Robustness, study: Study) -> Json:
+    """Give the answer of ``robustness``."""
+    return {**_head("robustness", study), **_plain(answer)}
+
+
 def record_json(record: Record) -> Json:
     """Give the whole record."""
     study = record.study
@@ -96,6 +113,10 @@ def record_json(record: Record) -> Json:
         },
         "shape": shape_json(record.shapes, study)["responses"],
         "recommend": recommend_json(record.choice, study),
+        "uncertainty": uncertainty_json(record.uncertainty, study),
+        "window": window_json(record.window, study),
+        "robustness": robustness_json(record.robustness, study),
+        "outward": _plain(record.outward),
         "maps": _plain(record.maps),
     }
 

@@ -12,11 +12,17 @@ from wideberth.decide.recommend import solve
 from wideberth.decide.records import Choice, FactorMap
 from wideberth.fit.models import fit
 from wideberth.fit.records import Models
+from wideberth.operate.outward import outward
+from wideberth.operate.records import Outward, Robustness, Window
+from wideberth.operate.robustness import wander
+from wideberth.operate.window import window_around
 from wideberth.progress import Progress, silent
 from wideberth.study.checking import check_study
 from wideberth.study.records import Finding, Study
 from wideberth.surface.records import Shape
 from wideberth.surface.ridge import shape
+from wideberth.uncertainty.assess import N_DRAWS, assess, draws_for
+from wideberth.uncertainty.records import Uncertainty
 
 _PACKAGES = ("numpy", "scipy")
 
@@ -36,6 +42,8 @@ class Record:
         What `check_study` found.
     maps : tuple of FactorMap
         Two factors at a time through the setpoint.
+    outward : Outward
+        The ridge of the compromise, and runs to try beyond the explored edge.
     """
 
     version: str
@@ -47,9 +55,19 @@ class Record:
     shapes: tuple[Shape, ...]
     choice: Choice
     maps: tuple[FactorMap, ...]
+    uncertainty: Uncertainty
+    window: Window
+    robustness: Robustness
+    outward: Outward
 
 
-def build_record(study: Study, *, seed: int | None = None, progress: Progress = silent) -> Record:
+def build_record(
+    study: Study,
+    *,
+    seed: int | None = None,
+    n_draws: int = N_DRAWS,
+    progress: Progress = silent,
+) -> Record:
     """Run every step of the job on a study.
 
     Raises
@@ -65,9 +83,17 @@ def build_record(study: Study, *, seed: int | None = None, progress: Progress = 
     shapes = shape(models) if study.numeric else ()
     progress("recommend", 0.2)
     problem, choice = solve(models, seed=seed)
-    progress("maps", 0.8)
-    maps = factor_maps(problem, choice)
-    progress("record", 0.95)
+    draws = draws_for(problem, choice, n_draws)
+    progress("uncertainty", 0.3)
+    sure = assess(problem, choice, draws)
+    progress("window", 0.6)
+    box = window_around(problem, choice)
+    progress("robustness", 0.8)
+    wandering = wander(problem, choice, draws)
+    progress("ridge", 0.85)
+    ridge = outward(problem, choice)
+    progress("maps", 0.9)
+    maps = factor_maps(problem, choice, draws)
     return Record(
         version=__version__,
         packages={name: package_version(name) for name in _PACKAGES},
@@ -78,4 +104,8 @@ def build_record(study: Study, *, seed: int | None = None, progress: Progress = 
         shapes=shapes,
         choice=choice,
         maps=maps,
+        uncertainty=sure,
+        window=box,
+        robustness=wandering,
+        outward=ridge,
     )

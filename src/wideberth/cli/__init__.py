@@ -7,7 +7,17 @@ from importlib import import_module
 
 import click
 
-_COMMANDS = ("start", "check", "fit", "shape", "recommend", "memo")
+_COMMANDS = (
+    "start",
+    "check",
+    "fit",
+    "shape",
+    "recommend",
+    "uncertainty",
+    "window",
+    "robustness",
+    "memo",
+)
 
 
 class _LazyCommands(click.Group):

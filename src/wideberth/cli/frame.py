@@ -6,11 +6,14 @@ import os
 import sys
 from collections.abc import Callable, Iterable, Sequence
 from functools import wraps
-from typing import Any, ParamSpec
+from typing import TYPE_CHECKING, Any, ParamSpec
 
 import click
 
-from wideberth.errors import InputError
+from wideberth.errors import InputError, refusal
+
+if TYPE_CHECKING:
+    from wideberth.study.records import Study
 
 P = ParamSpec("P")
 Command = Callable[P, int]
@@ -40,6 +43,25 @@ def seed_option(function: Callable[P, Any]) -> Callable[P, Any]:
 def quiet_option(function: Callable[P, Any]) -> Callable[P, Any]:
     """Take ``--quiet``."""
     return click.option("--quiet", is_flag=True, help="Show no progress.")(function)
+
+
+def at_option(function: Callable[P, Any]) -> Callable[P, Any]:
+    """Take ``--at``."""
+    return click.option("--at", help="Judge this setting instead: NAME=VALUE,NAME=VALUE,...")(
+        function
+    )
+
+
+def draws_option(function: Callable[P, Any]) -> Callable[P, Any]:
+    """Take ``--draws``."""
+    return click.option(
+        "--draws",
+        "n_draws",
+        type=click.IntRange(min=100),
+        default=2000,
+        show_default=True,
+        help="Number of draws; 2000 serve a report.",
+    )(function)
 
 
 def guarded(function: Command[P]) -> Callable[P, None]:
@@ -83,6 +105,27 @@ def _print_faults(error: InputError, *, as_json: bool) -> None:
     click.echo(f"{n_faults} {'thing is' if n_faults == 1 else 'things are'} wrong:", err=True)
     for fault in error.faults:
         click.echo(f"- {fault.where}: {fault.what}\n  {fault.mend}", err=True)
+
+
+def read_at(study: Study, text: str | None) -> dict[str, float | str] | None:
+    """Read the setting given with ``--at``, ``None`` when none was."""
+    if text is None:
+        return None
+    numeric = {factor.name for factor in study.numeric}
+    setting: dict[str, float | str] = {}
+    for part in text.split(","):
+        name, equals, value = (piece.strip() for piece in part.partition("="))
+        if not equals or not value:
+            raise refusal(f"'{part}' is no NAME=VALUE", "--at", "write catalyst=1.2,pressure=8")
+        if name in setting:
+            raise refusal(f"{name} is given twice", "--at", "give every factor once")
+        setting[name] = value
+        if name in numeric:
+            try:
+                setting[name] = float(value)
+            except ValueError as error:
+                raise refusal(f"{name} is '{value}'", "--at", "give a number") from error
+    return setting
 
 
 def print_table(header: Sequence[str], rows: Iterable[Sequence[str]]) -> None:

@@ -7,11 +7,13 @@ from typing import TYPE_CHECKING
 import click
 
 from wideberth.cli.frame import (
+    at_option,
     guarded,
     json_option,
     print_findings,
     print_table,
     quiet_option,
+    read_at,
     seed_option,
     study_argument,
 )
@@ -23,7 +25,7 @@ if TYPE_CHECKING:
 
 @click.command("recommend")
 @study_argument
-@click.option("--at", help="Judge this setting instead: NAME=VALUE,NAME=VALUE,...")
+@at_option
 @click.option(
     "--room",
     type=click.Choice(["stated", "none"]),
@@ -50,7 +52,7 @@ def command(
 
     study = read_study(study_dir)
     progress = ProgressLine(quiet=quiet or as_json)
-    setting = None if at is None else _setting(study, at)
+    setting = read_at(study, at)
     choice = recommend(fit(study), seed=seed, at=setting, room=room == "stated", progress=progress)
     progress.close()
     if as_json:
@@ -58,26 +60,6 @@ def command(
     else:
         print_choice(choice, study)
     return 0 if choice.status == "met" else 3
-
-
-def _setting(study: Study, text: str) -> dict[str, float | str]:
-    from wideberth.errors import refusal
-
-    numeric = {factor.name for factor in study.numeric}
-    setting: dict[str, float | str] = {}
-    for part in text.split(","):
-        name, equals, value = (piece.strip() for piece in part.partition("="))
-        if not equals or not value:
-            raise refusal(f"'{part}' is no NAME=VALUE", "--at", "write catalyst=1.2,pressure=8")
-        if name in setting:
-            raise refusal(f"{name} is given twice", "--at", "give every factor once")
-        setting[name] = value
-        if name in numeric:
-            try:
-                setting[name] = float(value)
-            except ValueError as error:
-                raise refusal(f"{name} is '{value}'", "--at", "give a number") from error
-    return setting
 
 
 def print_choice(choice: Choice, study: Study) -> None:
@@ -111,7 +93,7 @@ def print_choice(choice: Choice, study: Study) -> None:
 
 
 def _print_setting(choice: Choice, study: Study) -> None:
-    from wideberth.report.numbers import decimals_of, format_setting, format_value
+    from wideberth.report.numbers import decimals_of, format_setting, format_value, named
 
     if choice.setpoint is None:
         return
@@ -128,7 +110,7 @@ def _print_setting(choice: Choice, study: Study) -> None:
             allowed = " to ".join(format_value(end) for end in around.allowed)
             explored = _ends(around.explored, digits)
         rows.append(
-            (f"{name} [{units[name]}]", format_setting(study, name, value), room, allowed, explored)
+            (named(name, units[name]), format_setting(study, name, value), room, allowed, explored)
         )
     print_table(("factor", "set", "hold within", "allowed", "explored"), rows)
 
@@ -138,7 +120,7 @@ def _ends(ends: tuple[float, float], digits: int) -> str:
 
 
 def _print_predictions(choice: Choice) -> None:
-    from wideberth.report.numbers import format_range, format_value
+    from wideberth.report.numbers import format_range, format_value, named
 
     click.echo("\nExpected there")
     rows = []
@@ -148,7 +130,7 @@ def _print_predictions(choice: Choice) -> None:
         spread = (batch[1] - batch[0]) / 2 if batch else None
         rows.append(
             (
-                f"{name} [{prediction.unit}]" if prediction.unit else name,
+                named(name, prediction.unit),
                 format_value(prediction.mean, half or None),
                 format_range(*interval, half) if interval and half else "",
                 format_range(*batch, spread) if batch and spread else "",

@@ -1,4 +1,4 @@
-"""How many confirmation runs at a setting would be expected to prove its guarded limits.
+"""Confirmation runs at a setting: how many would prove its limits, and where they should fall.
 
 New runs at a setting that is already chosen owe nothing to the search, so their own bound, with
 the standard deviation pooled from the model and the new runs, is exact however it was chosen.
@@ -7,11 +7,12 @@ the standard deviation pooled from the model and the new runs, is exact however 
 from __future__ import annotations
 
 import numpy as np
+from scipy.special import stdtrit
 
 from wideberth.decide.arena import LimitSide
 from wideberth.decide.guards import Guard
 from wideberth.decide.problem import Problem, judged_blocks
-from wideberth.decide.records import Confirmation
+from wideberth.decide.records import Confirmation, ConfirmationRange
 from wideberth.fit.records import surface
 from wideberth.quadratic.terms import features
 from wideberth.study.records import FloatArray
@@ -41,6 +42,33 @@ def confirmation_runs(
         None,
         f"even {MOST_RUNS} confirmation runs at this setting would not be expected to prove it",
     )
+
+
+def confirmation_ranges(
+    problem: Problem, levels: tuple[int, ...], x: FloatArray
+) -> dict[str, ConfirmationRange]:
+    """Predict one run and the mean of three at a coded setting (k,), for responses with noise.
+
+    Two-sided prediction intervals, all responses together with 95 % after Bonferroni.
+    """
+    noisy = [m for m in problem.models.models if not m.exact and m.s and m.df_residual]
+    result = {}
+    for model in noisy:
+        t = float(stdtrit(model.df_residual, 1.0 - 0.05 / (2 * len(noisy))))
+        ends = {}
+        for n_runs in (1, 3):
+            lows, highs = [], []
+            for block in judged_blocks(model, problem.study):
+                at = surface(model, problem.study, levels=levels, block=block)
+                terms = features(x)
+                mean = float(terms @ at.coefficients)
+                leverage = float(terms @ at.covariance @ terms)
+                half = t * at.s * float(np.sqrt(leverage + 1.0 / n_runs))
+                lows.append(mean - half)
+                highs.append(mean + half)
+            ends[n_runs] = (min(lows), max(highs))
+        result[model.response] = ConfirmationRange(model.unit, ends[1], ends[3])
+    return result
 
 
 def _expected(

@@ -6,17 +6,20 @@ the desirability) most over their explored range are drawn.
 
 from __future__ import annotations
 
+from dataclasses import replace
 from itertools import combinations
 
 import numpy as np
 
 from wideberth.decide.arena import Arena
+from wideberth.decide.conformance import conformance_over, setting_sd
 from wideberth.decide.desirability import overall
 from wideberth.decide.judge import read_setting
 from wideberth.decide.problem import Problem, arena
 from wideberth.decide.records import Choice, FactorMap, LimitMap
+from wideberth.fit.draws import Draws
 from wideberth.quadratic.terms import features
-from wideberth.study.coding import to_actual
+from wideberth.study.coding import to_actual, to_coded
 from wideberth.study.records import FloatArray
 from wideberth.surface.explored import depth
 
@@ -25,8 +28,13 @@ _MOST_FACTORS = 3
 _BEYOND = 0.08
 
 
-def factor_maps(problem: Problem, choice: Choice) -> tuple[FactorMap, ...]:
-    """Draw the maps through the choice's setting; none without a setting or a numeric factor."""
+def factor_maps(
+    problem: Problem, choice: Choice, draws: Draws | None = None
+) -> tuple[FactorMap, ...]:
+    """Draw the maps through the choice's setting; none without a setting or a numeric factor.
+
+    With draws, each map carries the conformance of its settings.
+    """
     study = problem.study
     moving = np.flatnonzero(np.abs(problem.region.basis).max(axis=1, initial=0.0) > 1e-9)
     if choice.setpoint is None or not len(moving):
@@ -35,9 +43,29 @@ def factor_maps(problem: Problem, choice: Choice) -> tuple[FactorMap, ...]:
     rows = arena(problem, levels, "simultaneous" if problem.possible else "means")
     span = _spans(problem, x)
     if len(moving) == 1:
-        return (_map(problem, rows, x, int(moving[0]), None, span),)
+        only = _map(problem, rows, x, int(moving[0]), None, span)
+        return (_with_conformance(problem, choice, draws, only),)
     shown = sorted([j for j in _most_moving(rows, x, span) if j in moving][:_MOST_FACTORS])
-    return tuple(_map(problem, rows, x, a, b, span) for a, b in combinations(shown, 2))
+    views = [_map(problem, rows, x, a, b, span) for a, b in combinations(shown, 2)]
+    return tuple(_with_conformance(problem, choice, draws, view) for view in views)
+
+
+def _with_conformance(
+    problem: Problem, choice: Choice, draws: Draws | None, view: FactorMap
+) -> FactorMap:
+    if draws is None or choice.setpoint is None:
+        return view
+    study = problem.study
+    levels, x = read_setting(study, choice.setpoint)
+    names = [factor.name for factor in study.numeric]
+    actual = np.tile(to_actual(study.numeric, x), (len(view.up_actual), len(view.across_actual), 1))
+    actual[:, :, names.index(view.across)] = view.across_actual
+    if view.up:
+        actual[:, :, names.index(view.up)] = view.up_actual[:, None]
+    grid = to_coded(study.numeric, actual)
+    sd = setting_sd(study)
+    held = conformance_over(problem, draws, levels, grid, sd, choice.seed)
+    return replace(view, conformance=held)
 
 
 def _spans(problem: Problem, x: FloatArray) -> FloatArray:
@@ -90,4 +118,5 @@ def _map(
         desirability=None if y is None else overall(rows.goals, y),
         margins=tuple(margins),
         depth=depth(problem.explored, grid),
+        conformance=None,
     )

@@ -139,8 +139,13 @@ def expand(program: Program, x: FloatArray) -> Expansion:
     curvatures = []
     if program.guards:
         terms, jacobian = features(x.T), feature_gradients(x.T)
+        leverages: dict[bytes, _Leverage] = {}
         for part in program.guards:
-            value, slope, curvature = _guarded(part, terms, jacobian)
+            # responses with the same runs and terms share one leverage
+            key = part.covariance.tobytes()
+            if key not in leverages:
+                leverages[key] = _Leverage.at(terms, jacobian, part.covariance)
+            value, slope, curvature = _guarded(part, leverages[key])
             values[part.row] -= value
             slopes[part.row] -= slope
             curvatures.append((part.row, -curvature))
@@ -155,23 +160,36 @@ def weighted_curvature(program: Program, at: Expansion, multipliers: FloatArray)
     return total
 
 
-def _guarded(
-    part: GuardedPart, terms: FloatArray, jacobian: FloatArray
-) -> tuple[FloatArray, FloatArray, FloatArray]:
+@dataclass(frozen=True, slots=True, eq=False)
+class _Leverage:
+    """h at settings with its gradient and Hessian: shapes (N,), (k, N), (k, k, N)."""
+
+    value: FloatArray
+    slope: FloatArray
+    curvature: FloatArray
+
+    @classmethod
+    def at(cls, terms: FloatArray, jacobian: FloatArray, covariance: FloatArray) -> _Leverage:
+        k = jacobian.shape[-1]
+        pull = terms @ covariance
+        swept = np.matmul(jacobian.transpose(0, 2, 1), covariance)
+        curvature = 2 * np.matmul(swept, jacobian).transpose(2, 1, 0)
+        diagonal = np.arange(k)
+        curvature[diagonal, diagonal] += 4 * pull.T[1 + k : 1 + 2 * k]
+        first, second = (np.array(index, dtype=int) for index in pairs(k))
+        products = 2 * pull.T[1 + 2 * k :]
+        curvature[first, second] += products
+        curvature[second, first] += products
+        return cls(
+            value=np.einsum("np,np->n", pull, terms),
+            slope=2 * np.einsum("npk,np->kn", jacobian, pull),
+            curvature=curvature,
+        )
+
+
+def _guarded(part: GuardedPart, at: _Leverage) -> tuple[FloatArray, FloatArray, FloatArray]:
     """Evaluate weight * K(h), its gradient (k, N) and Hessian (k, k, N)."""
-    k = jacobian.shape[-1]
-    pull = terms @ part.covariance
-    leverage = np.einsum("np,np->n", pull, terms)
-    slope_h = 2 * np.einsum("npk,np->kn", jacobian, pull)
-    swept = np.einsum("npk,pq->nkq", jacobian, part.covariance)
-    curvature_h = 2 * np.einsum("nkq,nqj->kjn", swept, jacobian)
-    diagonal = np.arange(k)
-    curvature_h[diagonal, diagonal] += 4 * pull.T[1 + k : 1 + 2 * k]
-    first, second = (np.array(index, dtype=int) for index in pairs(k))
-    products = 2 * pull.T[1 + 2 * k :]
-    curvature_h[first, second] += products
-    curvature_h[second, first] += products
-    value, rate, bend = part.guard.derivatives(leverage)
-    slope = part.weight * rate * slope_h
-    curvature = part.weight * (rate * curvature_h + bend * slope_h[:, None] * slope_h[None])
+    value, rate, bend = part.guard.derivatives(at.value)
+    slope = part.weight * rate * at.slope
+    curvature = part.weight * (rate * at.curvature + bend * at.slope[:, None] * at.slope[None])
     return part.weight * value, slope, curvature

@@ -12,7 +12,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from wideberth.decide.aims import BEST, LEAST_POOR, NEAREST, SAFEST, Aim
-from wideberth.decide.confirmation import confirmation_runs
+from wideberth.decide.confirmation import confirmation_ranges, confirmation_runs
 from wideberth.decide.conflicts import can_hold, conflict_of_steps, side_text, smallest_conflict
 from wideberth.decide.edges import edge_sentences
 from wideberth.decide.findings import choice_findings, rests_on_unusable
@@ -248,6 +248,7 @@ def _describe(
         edge=edge,
         conflicts=conflicts,
         confirmation=confirmation_runs(problem, levels, x) if status == "provisional" else None,
+        confirm=confirmation_ranges(problem, levels, x),
         findings=choice_findings(
             problem,
             levels,

@@ -135,6 +135,19 @@ class Confirmation:
 
 
 @dataclass(frozen=True, slots=True)
+class ConfirmationRange:
+    """Where confirmation runs of one response should fall, in its unit.
+
+    ``one`` is for a single run, ``three`` for the mean of three; all responses together with 95 %
+    (the risk is split equally), the widest of the blocks where blocks recur.
+    """
+
+    unit: str
+    one: tuple[float, float]
+    three: tuple[float, float]
+
+
+@dataclass(frozen=True, slots=True)
 class Choice:
     """The answer of ``recommend``, or the judgement of a setting of the person's own.
 
@@ -170,6 +183,7 @@ class Choice:
     edge: tuple[str, ...]
     conflicts: tuple[Conflict, ...]
     confirmation: Confirmation | None
+    confirm: Mapping[str, ConfirmationRange]
     findings: tuple[Finding, ...]
 
 
@@ -198,6 +212,9 @@ class FactorMap:
         Overall desirability of the fitted means; ``None`` without goals.
     depth : ndarray, shape (n_up, n_across)
         How far inside the explored region, below 0 outside.
+    conformance : ndarray or None, shape (n_up, n_across)
+        Probability that a batch meets every limit, setting error included; ``None`` without
+        limits or draws.
     """
 
     across: str
@@ -207,3 +224,4 @@ class FactorMap:
     desirability: FloatArray | None
     margins: tuple[LimitMap, ...]
     depth: FloatArray
+    conformance: FloatArray | None

@@ -39,7 +39,7 @@ def outward(problem: Problem, choice: Choice, *, progress: Progress = silent) ->
         return Outward((), (), "Without goals there is no compromise to follow.")
     if not choice.edge:
         return Outward((), (), "The setting does not lean on any edge; nothing calls outwards.")
-    levels, start = read_setting(problem.study, choice.setpoint)
+    levels, _ = read_setting(problem.study, choice.setpoint)
     path: list[PathPoint] = []
     runs: list[RunToTry] = []
     mode: Mode = "pointwise" if problem.possible else "means"

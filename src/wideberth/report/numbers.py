@@ -27,7 +27,9 @@ def format_value(value: float, uncertainty: float | None = None) -> str:
     text = f"{rounded:.{max(decimals, 0)}f}"
     if uncertainty is None and "." in text:
         text = text.rstrip("0").rstrip(".")
-    return "0" if text in ("-0", "") else text
+    if text.startswith("-") and float(text) == 0.0:
+        text = text[1:]
+    return text or "0"
 
 
 def format_range(low: float, high: float, uncertainty: float | None = None) -> str:
@@ -55,3 +57,8 @@ def decimals_of(factor: NumericFactor) -> int:
 def with_unit(text: str, unit: str) -> str:
     """Put a unit behind a number."""
     return f"{text} {unit}".rstrip()
+
+
+def named(name: str, unit: str) -> str:
+    """Name a quantity with its unit in brackets, where it has one."""
+    return f"{name} [{unit}]" if unit else name

@@ -10,6 +10,7 @@ from wideberth.report.numbers import (
     format_range,
     format_setting,
     format_value,
+    named,
     with_unit,
 )
 from wideberth.report.wording import (
@@ -138,12 +139,8 @@ def _settings(study: Study, choice: Choice) -> Table:
             "no tolerance stated" if end is None else f"{end[0]:.{digits}f} to {end[1]:.{digits}f}"
             for end in ends
         ]
-        rows.append((_named(name, units[name]), format_setting(study, name, value), *texts))
+        rows.append((named(name, units[name]), format_setting(study, name, value), *texts))
     return Table("Settings", header, tuple(rows))
-
-
-def _named(name: str, unit: str) -> str:
-    return f"{name} [{unit}]" if unit else name
 
 
 def _responses(record: Record) -> Table:
@@ -173,7 +170,7 @@ def _responses(record: Record) -> Table:
             f"{limit_words(v)}: {guard_sentence(v.guard, v.confidence, v.share)}" for v in own
         )
         margins = "; ".join(margin_words(v) for v in own)
-        rows.append((_named(name, prediction.unit), expected, single, limits, margins))
+        rows.append((named(name, prediction.unit), expected, single, limits, margins))
     for constraint in choice.constraints:
         word = "at most" if constraint.side == "at_most" else "at least"
         mark = "met" if constraint.met else "not met"

@@ -2,9 +2,15 @@
 
 from __future__ import annotations
 
+import math
+from collections.abc import Mapping
+
+from wideberth.decide.conformance import Conformance
 from wideberth.decide.records import Choice, LimitVerdict, Status
-from wideberth.report.numbers import format_value
-from wideberth.study.records import GuardKind, Study
+from wideberth.operate.records import Window
+from wideberth.report.numbers import decimals_of, format_setting, format_value, with_unit
+from wideberth.study.records import GuardKind, NumericFactor, Setting, Study
+from wideberth.uncertainty.records import Uncertainty
 
 STATUS_SENTENCE: dict[Status, str] = {
     "met": "Every limit holds with its guard at this setpoint, over its whole room.",
@@ -105,3 +111,116 @@ def unknowns(study: Study) -> tuple[str, ...]:
             " differ."
         )
     return tuple(known)
+
+
+SINGLY_WARNING = (
+    "Ranges taken alone hold only while every other factor stays in its room; they do not hold"
+    " together. The window does."
+)
+
+
+def batches_in_100(share: float) -> str:
+    """Write a share of batches as whole batches in 100, no finer."""
+    if share > 0.99:
+        return "more than 99 of 100 batches"
+    if share < 0.01:
+        return "fewer than 1 of 100 batches"
+    return f"{int(100 * share)} of 100 batches"
+
+
+def conformance_words(one: Conformance) -> str:
+    """Word a conformance with its lower bound."""
+    low = int(100 * min(one.lower, 0.99))
+    least = f"at least {low}, with 95 % confidence" if low >= 1 else "perhaps none"
+    block = f"; worst block {one.block}" if one.block else ""
+    return f"{batches_in_100(one.mean)} ({least}{block})"
+
+
+def together_sentences(sure: Uncertainty) -> tuple[str, ...]:
+    """Say how many batches meet all limits together, with and without setting error."""
+    if sure.conformance is None:
+        return ("No limit is stated, so every batch meets all of them.",)
+    words = conformance_words(sure.conformance)
+    if not sure.setting_error_included or sure.conformance_exact_setting is None:
+        return (f"All limits together: {words}; settings taken as held exactly.",)
+    exact = conformance_words(sure.conformance_exact_setting)
+    return (
+        f"All limits together, settings wandering within their tolerances: {words}.",
+        f"As if every batch were run at exactly the setting: {exact}.",
+    )
+
+
+def location_sentence(sure: Uncertainty) -> str:
+    """Say how well the runs locate the optimum."""
+    if sure.region is None:
+        return "Where the optimum lies cannot be said."
+    share = 100 * sure.region.share_of_explored
+    filled = "less than 1 %" if share < 1 else f"{share:.0f} %"
+    if not sure.region.determined:
+        return (
+            f"The runs do not determine where the optimum lies: it may be anywhere in {filled} of"
+            " what may be searched."
+        )
+    sentence = (
+        f"With {100 * sure.region.level:g} % confidence the optimum of the true equations lies in"
+        f" a region that fills {filled} of what may be searched"
+    )
+    edge = sure.edge_share or 0.0
+    if edge >= 0.2:
+        sentence += f"; in {100 * edge:.0f} of 100 draws it lies on the edge of that"
+    return sentence + "."
+
+
+def loss_sentence(sure: Uncertainty, choice: Choice) -> tuple[str, ...]:
+    """Say what may be lost against the unknown best, and how rosy the fitted optimum looks."""
+    said = []
+    if sure.possible_loss is not None:
+        said.append(
+            "Against the best setting of each draw it loses"
+            f" {sure.possible_loss.median:.3f} of overall desirability in the middle and at most"
+            f" {sure.possible_loss.bound:.3f} in 95 of 100 draws."
+        )
+    if sure.optimism is not None and choice.desirability is not None:
+        said.append(
+            "A fitted optimum looks too good, because it was picked where the noise helped it: the"
+            f" overall desirability {choice.desirability:.3f} is about"
+            f" {max(sure.optimism.desirability, 0):.3f} too much; corrected it is"
+            f" {sure.optimism.corrected:.3f}."
+        )
+    return tuple(said)
+
+
+def setting_words(study: Study, setting: Setting) -> str:
+    """Write a setting in one line: ``catalyst 1.38 wt%, pressure 9.8 bar``."""
+    units = {factor.name: factor.unit for factor in study.factors}
+    return ", ".join(
+        with_unit(f"{name} {format_setting(study, name, value)}", units[name])
+        for name, value in setting.items()
+    )
+
+
+def window_sentence(box: Window) -> str:
+    """Say what the window is, or that there is none."""
+    if box.status == "none":
+        return "No window: not every limit holds with its guard over the whole room."
+    return (
+        "Every limit holds with its guard everywhere in this window, all factors free at once:"
+        " proven over the whole box."
+    )
+
+
+def ends_words(factor: NumericFactor, ends: tuple[float, float], *, inwards: bool = False) -> str:
+    """Write two ends of a range to the digits a setting is worth, rounded inwards if asked."""
+    digits = decimals_of(factor)
+    low, high = ends
+    if inwards:
+        slack = 1e-7 * 10.0**-digits
+        low = math.ceil((low - slack) * 10**digits) / 10**digits
+        high = math.floor((high + slack) * 10**digits) / 10**digits
+    return f"{low:.{digits}f} to {high:.{digits}f}"
+
+
+def shares_words(shares: Mapping[str, float]) -> str:
+    """Name the factors that make most of a variance, largest first."""
+    large = sorted(shares.items(), key=lambda item: -item[1])
+    return ", ".join(f"{name} {100 * share:.0f} %" for name, share in large if share >= 0.05)

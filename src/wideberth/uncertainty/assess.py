@@ -22,7 +22,9 @@ from wideberth.fit.draws import Draws, draw_coefficients, why_no_draws
 from wideberth.fit.records import Models, design_map, level_names
 from wideberth.progress import Progress, silent
 from wideberth.quadratic.terms import features
+from wideberth.study.coding import to_actual
 from wideberth.study.records import Finding, FloatArray, Setting
+from wideberth.surface.explored import factor_ranges
 from wideberth.uncertainty.cloud import Cloud, cloud_of, desirability_at, on_edge
 from wideberth.uncertainty.location import FEWEST, optimum_region
 from wideberth.uncertainty.records import Optimism, OptimumRegion, PossibleLoss, Uncertainty
@@ -31,6 +33,7 @@ N_DRAWS = 2000
 LEVEL = 0.95
 _FEW_DF = 4
 _FLAT = 1.0 - 1e-8
+_NEARLY_ALL = 0.8
 
 
 def uncertainty(
@@ -102,6 +105,8 @@ def assess(
     held = conformance(problem, draws, levels, x, setting_sd(problem.study), choice.seed)
     exact = conformance(problem, draws, levels, x, np.zeros(len(x)), choice.seed)
     some = cloud.feasible
+    # a setting that breaks its limits is not compared with settings that hold them
+    stands = choice.asked or choice.status in ("met", "provisional", "unreached", "unsupported")
     result = replace(
         nothing,
         draws=draws.n_draws,
@@ -109,10 +114,10 @@ def assess(
         edge_share=float(on_edge(problem.region, cloud.x[some]).mean()) if some.any() else None,
         level_shares=_level_shares(problem, cloud),
         region=_region(problem, cloud),
-        possible_loss=_possible_loss(problem, choice, draws, cloud),
+        possible_loss=_possible_loss(problem, choice, draws, cloud) if stands else None,
         conformance=held,
         conformance_exact_setting=exact,
-        optimism=None if choice.asked else _optimism(problem, choice, draws, cloud),
+        optimism=_optimism(problem, choice, draws, cloud) if stands else None,
     )
     return replace(result, findings=_findings(problem, result))
 
@@ -173,7 +178,13 @@ def _optimism(problem: Problem, choice: Choice, draws: Draws, cloud: Cloud) -> O
     A fitted optimum looks too good for the same reason: it was picked where the noise flattered.
     """
     best = choice.desirability
-    if not problem.goals or best is None or choice.setpoint is None or best >= _FLAT:
+    if (
+        choice.asked
+        or not problem.goals
+        or best is None
+        or choice.setpoint is None
+        or best >= _FLAT
+    ):
         return None
     if not cloud.feasible.any():
         return None
@@ -210,6 +221,18 @@ def _fitted_desirability(problem: Problem, levels: tuple[int, ...], cloud: Cloud
     return result
 
 
+def _hardly_located(problem: Problem, region: OptimumRegion | None) -> list[str]:
+    if region is None:
+        return []
+    low, high = factor_ranges(problem.explored)
+    whole = [to_actual(problem.study.numeric, end) for end in (low, high)]
+    loose = []
+    for j, (name, (first, last)) in enumerate(region.ranges.items()):
+        if last - first > _NEARLY_ALL * (whole[1][j] - whole[0][j]) > 0:
+            loose.append(name)
+    return loose
+
+
 def _findings(problem: Problem, result: Uncertainty) -> tuple[Finding, ...]:
     found = []
     if result.region is None and result.feasible_share is not None:
@@ -226,6 +249,15 @@ def _findings(problem: Problem, result: Uncertainty) -> tuple[Finding, ...]:
                 "look",
                 "The runs do not determine where the optimum lies: it may be almost"
                 " anywhere in what may be searched.",
+            )
+        )
+    loose = _hardly_located(problem, result.region)
+    if loose and result.region is not None and result.region.determined:
+        found.append(
+            Finding(
+                "look",
+                f"The runs hardly locate the optimum in {', '.join(loose)}: the region"
+                " spans nearly all that was explored there.",
             )
         )
     if result.feasible_share is not None and result.feasible_share < 0.9:

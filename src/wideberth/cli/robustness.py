@@ -1,0 +1,95 @@
+"""``wideberth robustness``."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import click
+
+from wideberth.cli.frame import (
+    at_option,
+    draws_option,
+    guarded,
+    json_option,
+    print_findings,
+    print_table,
+    quiet_option,
+    read_at,
+    seed_option,
+    study_argument,
+)
+
+if TYPE_CHECKING:
+    from wideberth.operate.records import Robustness
+    from wideberth.study.records import Study
+
+
+@click.command("robustness")
+@study_argument
+@at_option
+@draws_option
+@seed_option
+@json_option
+@quiet_option
+@guarded
+def command(
+    study_dir: str, *, at: str | None, n_draws: int, seed: int | None, as_json: bool, quiet: bool
+) -> int:
+    """Say what happens when the settings wander within their tolerances.
+
+    Example: wideberth robustness my-study
+    """
+    from wideberth.chain.as_json import dumps, robustness_json
+    from wideberth.cli.progress import ProgressLine
+    from wideberth.decide.recommend import solve
+    from wideberth.fit.models import fit
+    from wideberth.operate.robustness import wander
+    from wideberth.study.reading import read_study
+    from wideberth.uncertainty.assess import draws_for
+
+    study = read_study(study_dir)
+    progress = ProgressLine(quiet=quiet or as_json)
+    problem, choice = solve(fit(study), seed=seed, at=read_at(study, at), progress=progress)
+    draws = draws_for(problem, choice, n_draws)
+    answer = wander(problem, choice, draws, progress=progress)
+    progress.close()
+    if as_json:
+        click.echo(dumps(robustness_json(answer, study)), nl=False)
+    else:
+        print_robustness(answer, study)
+    return 0 if choice.status == "met" else 3
+
+
+def print_robustness(answer: Robustness, study: Study) -> None:
+    """Print what setting error does to every response."""
+    from wideberth.report.numbers import format_range, format_value, named
+    from wideberth.report.wording import CAUTIONS, conformance_words, setting_words, shares_words
+
+    if answer.setting is None:
+        click.echo(answer.advice)
+        return
+    click.echo(f"Setting: {setting_words(study, answer.setting)}.")
+    print_findings(answer.findings)
+    rows = []
+    for name, one in answer.responses.items():
+        size = one.sd_total or one.sd_setting or None
+        rows.append(
+            (
+                named(name, one.unit),
+                format_value(one.shift, size),
+                format_value(one.sd_setting, size),
+                "not known" if one.sd_batch is None else format_value(one.sd_batch, size),
+                "not known" if one.sd_total is None else format_value(one.sd_total, size),
+                format_range(*one.worst, size),
+                shares_words(one.shares),
+            )
+        )
+    header = ("response", "shift", "sd setting", "sd batch", "sd total", "room", "makes it")
+    click.echo("")
+    print_table(header, rows)
+    if answer.conformance is not None:
+        click.echo(
+            f"\nAll limits together, settings wandering: {conformance_words(answer.conformance)}."
+        )
+    click.echo(answer.advice)
+    click.echo("Cautions: " + " ".join(CAUTIONS))

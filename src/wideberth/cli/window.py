@@ -1,0 +1,85 @@
+"""``wideberth window``."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import click
+
+from wideberth.cli.frame import (
+    at_option,
+    guarded,
+    json_option,
+    print_table,
+    quiet_option,
+    read_at,
+    seed_option,
+    study_argument,
+)
+
+if TYPE_CHECKING:
+    from wideberth.operate.records import Window
+    from wideberth.study.records import Study
+
+
+@click.command("window")
+@study_argument
+@at_option
+@seed_option
+@json_option
+@quiet_option
+@guarded
+def command(study_dir: str, *, at: str | None, seed: int | None, as_json: bool, quiet: bool) -> int:
+    """Give the operating window: the box around the setpoint in all of which every limit holds.
+
+    Example: wideberth window my-study
+    """
+    from wideberth.chain.as_json import dumps, window_json
+    from wideberth.cli.progress import ProgressLine
+    from wideberth.fit.models import fit
+    from wideberth.operate.window import window
+    from wideberth.study.reading import read_study
+
+    study = read_study(study_dir)
+    progress = ProgressLine(quiet=quiet or as_json)
+    box = window(fit(study), seed=seed, at=read_at(study, at), progress=progress)
+    progress.close()
+    if as_json:
+        click.echo(dumps(window_json(box, study)), nl=False)
+    else:
+        print_window(box, study)
+    return 0 if box.status == "proven" else 3
+
+
+def print_window(box: Window, study: Study) -> None:
+    """Print a window, or what stands against one."""
+    from wideberth.report.numbers import named
+    from wideberth.report.wording import (
+        CAUTIONS,
+        SINGLY_WARNING,
+        ends_words,
+        setting_words,
+        window_sentence,
+    )
+
+    if box.setting is not None:
+        click.echo(f"Setting: {setting_words(study, box.setting)}.")
+    click.echo(window_sentence(box))
+    for sentence in box.must_give:
+        click.echo(f"  {sentence}")
+    rows = [
+        (
+            named(factor.name, factor.unit),
+            ends_words(factor, box.settable[factor.name], inwards=True),
+            box.stopped_by[factor.name].low or "nothing",
+            box.stopped_by[factor.name].high or "nothing",
+            ends_words(factor, box.singly[factor.name], inwards=True),
+        )
+        for factor in study.numeric
+        if box.status == "proven"
+    ]
+    if rows:
+        click.echo("")
+        print_table(("factor", "window", "stopped below by", "above by", "alone"), rows)
+        click.echo(f"\n{SINGLY_WARNING}")
+    click.echo("Cautions: " + " ".join(CAUTIONS))
