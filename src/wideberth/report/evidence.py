@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from wideberth.chain.record import Record
 from wideberth.fit.records import Model
+from wideberth.report.assurance import assurance
 from wideberth.report.blocks import Block, Bullets, Drawing, Heading, PageBreak, Paragraph, Table
 from wideberth.report.figures import draw_line, draw_map, draw_margins, draw_residuals
 from wideberth.report.numbers import format_value, with_unit
@@ -18,6 +19,11 @@ Geometry: canonical form after Box and Wilson (1951); ridge path after Hoerl (19
 Goals: desirabilities of Derringer and Suich, Journal of Quality Technology 12 (1980), 214-219.
 Guards: confidence, prediction and one-sided tolerance bounds (noncentral t, Owen 1968), made \
 simultaneous over the region by simulating the largest pivotal ratio.
+Draws: exact posterior draws of a multivariate regression (Geisser 1965), each optimised anew.
+Region of the optimum: an ellipsoid around the draws' optima, sized by their own quantile.
+Conformance: posterior predictive probability of meeting all limits (Peterson 2004).
+Window: worst places of quadratics by faces; guards bounded on ever smaller boxes until proven.
+Wandering settings: exact mean and variance of a quadratic in normal errors.
 Explored region: the box of the runs cut with their smallest ellipsoid (Khachiyan 1996).
 Room: limits, constraints and bounds hold at the worst place of setpoint plus or minus tolerance.
 """
@@ -30,6 +36,7 @@ def evidence(record: Record) -> tuple[Block, ...]:
         Heading(2, "Evidence"),
         *_limits(record),
         *_maps(record),
+        *assurance(record),
         *_goals(record),
         *_models(record),
         *_geometry(record),
@@ -89,15 +96,25 @@ def _maps(record: Record) -> list[Block]:
     blocks: list[Block] = [
         Heading(3, "Where the limits run"),
         Paragraph(
-            "Each map shows two factors through the setpoint, the others held there: the darker,"
-            " the farther from every limit. Lines are where a guarded limit is just met, named;"
-            " dots are runs, the dotted line bounds what was explored, the small box is the room."
+            "Each map shows two factors through the setpoint, the others held there:"
+            f" {_shading(record)}. Lines are where a guarded limit is just met, named; dots are runs, the dotted line"
+            " bounds what was explored. The small box is the room, the dashed box the window, the"
+            " dash-dotted line the region of the optimum seen along the other factors."
             + (" The three factors that move the margins most are shown." if several else "")
         ),
     ]
     for view in record.maps:
-        draw = draw_map if view.up else draw_line
-        figure = draw(record.study, record.choice, view)
+        figure = (
+            draw_map(
+                record.study,
+                record.choice,
+                view,
+                window=record.window,
+                region=record.uncertainty.region,
+            )
+            if view.up
+            else draw_line(record.study, record.choice, view)
+        )
         names = f"{view.across} and {view.up}" if view.up else view.across
         limits = ", ".join(f"{limit.response} {limit.side}" for limit in view.margins) or "none"
         blocks.append(
@@ -108,6 +125,15 @@ def _maps(record: Record) -> list[Block]:
             )
         )
     return blocks
+
+
+def _shading(record: Record) -> str:
+    view = record.maps[0]
+    if view.conformance is not None:
+        return "the darker, the more batches meet every limit, settings wandering"
+    if view.margins:
+        return "the darker, the farther from every limit"
+    return "the darker, the better the goals are met"
 
 
 def _goals(record: Record) -> list[Block]:

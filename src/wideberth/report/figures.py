@@ -7,6 +7,7 @@ from __future__ import annotations
 
 from math import ceil
 
+import matplotlib as mpl
 import numpy as np
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
@@ -14,6 +15,7 @@ from matplotlib.patches import Rectangle
 
 from wideberth.decide.records import Choice, FactorMap, LimitMap, LimitVerdict
 from wideberth.fit.records import Model, Models
+from wideberth.operate.records import Window
 from wideberth.report.style import (
     BLUE,
     FAINT,
@@ -25,10 +27,13 @@ from wideberth.report.style import (
     house_style,
     plain_axes,
 )
+from wideberth.study.coding import to_actual
 from wideberth.study.records import FloatArray, Study
+from wideberth.uncertainty.records import OptimumRegion
 
 _STANDS_OUT = 3.0
 _SHADED_TO = 6.0
+_BATCHES = np.array([0.0, 10.0, 50.0, 80.0, 90.0, 95.0, 99.0, 100.0])
 
 
 def shortened(name: str, longest: int = 26) -> str:
@@ -49,7 +54,7 @@ def draw_margins(limits: tuple[LimitVerdict, ...], ax: Axes | None = None) -> Fi
     """Draw the margins of all limits on one axis: right of 0 holds, left of 0 is broken."""
     judged = [verdict for verdict in limits if verdict.margin is not None]
     with house_style():
-        figure, ax = _axes(ax, (WIDTH, 0.75 + 0.26 * max(len(judged), 1)))
+        figure, ax = axes_or_new(ax, (WIDTH, 0.75 + 0.26 * max(len(judged), 1)))
         for place, verdict in enumerate(judged):
             margin = verdict.margin or 0.0
             colour = BLUE if verdict.met else RUST
@@ -74,23 +79,23 @@ def draw_margins(limits: tuple[LimitVerdict, ...], ax: Axes | None = None) -> Fi
     return figure
 
 
-def draw_map(study: Study, choice: Choice, view: FactorMap, ax: Axes | None = None) -> Figure:
-    """Draw two factors through the setpoint: shading by the smallest margin, limits by name."""
+def draw_map(
+    study: Study,
+    choice: Choice,
+    view: FactorMap,
+    *,
+    window: Window | None = None,
+    region: OptimumRegion | None = None,
+    ax: Axes | None = None,
+) -> Figure:
+    """Draw two factors through the setpoint: shading by conformance, limits by name.
+
+    Without draws the shading is the smallest margin, without limits the desirability. A window is
+    a dashed box, the region of the optimum, seen along the other factors, a dash-dotted line.
+    """
     with house_style():
-        figure, ax = _axes(ax, (WIDTH * 0.62, WIDTH * 0.5))
-        smallest = _smallest(view)
-        shade = view.desirability if smallest is None else np.clip(smallest, 0.0, _SHADED_TO)
-        label = "desirability" if smallest is None else "smallest margin [batch sd]"
-        if shade is not None:
-            top = 1.0 if smallest is None else _SHADED_TO
-            steps = np.linspace(0, top, 13)
-            filled = ax.contourf(
-                view.across_actual, view.up_actual, shade, levels=steps, cmap=SHADE, alpha=0.75
-            )
-            bar = figure.colorbar(filled, ax=ax, pad=0.02, fraction=0.05)
-            bar.set_label(label)
-            bar.set_ticks(np.linspace(0, top, 4 if smallest is not None else 5).tolist())
-            bar.outline.set_visible(False)
+        figure, ax = axes_or_new(ax, (WIDTH * 0.66, WIDTH * 0.52))
+        _shade(figure, ax, view)
         for i, limit in enumerate(view.margins):
             _limit_line(ax, view, limit, i, study)
         if view.depth.min() < 0 < view.depth.max():
@@ -104,6 +109,8 @@ def draw_map(study: Study, choice: Choice, view: FactorMap, ax: Axes | None = No
                 linestyles=[(0, (1, 2))],
             )
         _mark_runs(ax, study, view)
+        _mark_window(ax, view, window)
+        _mark_region(ax, study, view, region)
         _mark_setpoint(ax, choice, view)
         units = {factor.name: factor.unit for factor in study.factors}
         ax.set_xlabel(axis_label(view.across, units[view.across]))
@@ -117,7 +124,7 @@ def draw_map(study: Study, choice: Choice, view: FactorMap, ax: Axes | None = No
 def draw_line(study: Study, choice: Choice, view: FactorMap, ax: Axes | None = None) -> Figure:
     """Draw the only factor there is: each limit's margin along it, by name."""
     with house_style():
-        figure, ax = _axes(ax, (WIDTH * 0.8, 2.6))
+        figure, ax = axes_or_new(ax, (WIDTH * 0.8, 2.6))
         x = view.across_actual
         for i, limit in enumerate(view.margins):
             y = limit.margin[0]
@@ -153,12 +160,76 @@ def draw_residuals(models: Models) -> Figure:
     return figure
 
 
-def _axes(ax: Axes | None, size: tuple[float, float]) -> tuple[Figure, Axes]:
+def axes_or_new(ax: Axes | None, size: tuple[float, float]) -> tuple[Figure, Axes]:
+    """Take the caller's axes with their figure, or make new ones of a size in inches."""
     if ax is None:
         figure = Figure(figsize=size, layout="constrained")
         return figure, figure.add_subplot()
     figure = ax.get_figure(root=True)  # type: ignore[assignment]
     return figure, ax
+
+
+def _shade(figure: Figure, ax: Axes, view: FactorMap) -> None:
+    """Shade in one hue, in steps that a grey print keeps apart, with a bar that says of what."""
+    smallest = _smallest(view)
+    if view.conformance is not None:
+        shade, label, steps = 100 * view.conformance, "batches inside all limits [%]", _BATCHES
+    elif smallest is not None:
+        shade = np.clip(smallest, 0.0, _SHADED_TO)
+        label, steps = "smallest margin [batch sd]", np.linspace(0, _SHADED_TO, 7)
+    elif view.desirability is not None:
+        shade, label, steps = view.desirability, "desirability", np.linspace(0, 1, 11)
+    else:
+        return
+    colours = mpl.colormaps[SHADE](np.linspace(0.02, 0.62, len(steps) - 1))
+    filled = ax.contourf(
+        view.across_actual, view.up_actual, shade, levels=steps, colors=colours.tolist()
+    )
+    bar = figure.colorbar(filled, ax=ax, pad=0.02, fraction=0.06, spacing="uniform")
+    bar.set_label(label)
+    bar.ax.tick_params(labelsize=7)
+    bar.outline.set_visible(False)
+
+
+def _mark_window(ax: Axes, view: FactorMap, window: Window | None) -> None:
+    if window is None or window.status != "proven":
+        return
+    (left, right), (low, high) = window.ranges[view.across], window.ranges[view.up]
+    ax.add_patch(
+        Rectangle(
+            (left, low),
+            right - left,
+            high - low,
+            fill=False,
+            edgecolor=INK,
+            linewidth=1.3,
+            linestyle=(0, (4, 2)),
+            zorder=4,
+        )
+    )
+
+
+def _mark_region(ax: Axes, study: Study, view: FactorMap, region: OptimumRegion | None) -> None:
+    """Outline the region of the optimum as seen along the other factors."""
+    if region is None:
+        return
+    names = [factor.name for factor in study.numeric]
+    pair = [names.index(view.across), names.index(view.up)]
+    spread = np.linalg.pinv(region.shape)[np.ix_(pair, pair)]
+    sizes, axes = np.linalg.eigh(spread)
+    turn = np.linspace(0, 2 * np.pi, 181)
+    circle = np.stack([np.cos(turn), np.sin(turn)])
+    coded = np.tile(region.centre, (len(turn), 1))
+    coded[:, pair] += (axes @ (np.sqrt(np.maximum(sizes, 0.0))[:, None] * circle)).T
+    actual = to_actual(study.numeric, coded)
+    ax.plot(
+        actual[:, pair[0]],
+        actual[:, pair[1]],
+        color=RUST,
+        linewidth=1.2,
+        linestyle=(0, (6, 2, 1, 2)),
+        zorder=4,
+    )
 
 
 def _limit_name(limit: LimitVerdict | LimitMap, unit: str) -> str:

@@ -15,8 +15,11 @@ from wideberth.report.numbers import (
 )
 from wideberth.report.wording import (
     CAUTIONS,
+    conformance_words,
+    ends_words,
     guard_sentence,
     limit_words,
+    location_sentence,
     margin_words,
     status_sentence,
     unknowns,
@@ -47,12 +50,13 @@ def page_one(record: Record) -> tuple[Block, ...]:
     doubts = tuple(finding.text for finding in _spoiling(record))
     if doubts:
         blocks.append(Bullets("What weakens this answer", doubts, tone="doubt"))
-    blocks += [_settings(study, choice), _responses(record)]
+    blocks += [_settings(record), _responses(record)]
     if choice.ruling:
         blocks.append(Paragraph(f"The limit that rules: {choice.ruling}."))
     blocks += [
-        Bullets("What is not known", unknowns(study)),
+        Bullets("What is not known", (_location(record), *unknowns(study))),
         Paragraph(_confirmation(choice)),
+        *_confirmation_table(choice),
         Bullets("Cautions", CAUTIONS),
         SignOff(
             (
@@ -122,8 +126,25 @@ def _listed(items: list[str]) -> str:
     return items[0] if len(items) == 1 else f"{', '.join(items[:-1])} and {items[-1]}"
 
 
-def _settings(study: Study, choice: Choice) -> Table:
-    header = ("Factor", setting_word(choice).capitalize(), "Hold within", "Allowed", "Explored")
+def _location(record: Record) -> str:
+    """Say what is not known about where the optimum lies."""
+    sure = record.uncertainty
+    if sure.reason:
+        return f"How sure the answer is: {sure.reason}."
+    loose = [finding.text for finding in sure.findings if "locate" in finding.text]
+    return " ".join([location_sentence(sure), *loose])
+
+
+def _settings(record: Record) -> Table:
+    study, choice, box = record.study, record.choice, record.window
+    header = (
+        "Factor",
+        setting_word(choice).capitalize(),
+        "Hold within",
+        "Proven window",
+        "Allowed",
+        "Explored",
+    )
     rows: list[tuple[str, ...]] = []
     units = {factor.name: factor.unit for factor in study.factors}
     numeric = {factor.name: factor for factor in study.numeric}
@@ -131,7 +152,7 @@ def _settings(study: Study, choice: Choice) -> Table:
         around = choice.factors.get(name)
         if around is None:
             levels = next(f.levels for f in study.categorical if f.name == name)
-            rows.append((name, str(value), "", ", ".join(levels), ""))
+            rows.append((name, str(value), "", "", ", ".join(levels), ""))
             continue
         digits = decimals_of(numeric[name])
         ends = [around.room, around.allowed, around.explored]
@@ -139,7 +160,11 @@ def _settings(study: Study, choice: Choice) -> Table:
             "no tolerance stated" if end is None else f"{end[0]:.{digits}f} to {end[1]:.{digits}f}"
             for end in ends
         ]
-        rows.append((named(name, units[name]), format_setting(study, name, value), *texts))
+        proven = "none"
+        if box.status == "proven":
+            proven = ends_words(numeric[name], box.settable[name], inwards=True)
+        shown = format_setting(study, name, value)
+        rows.append((named(name, units[name]), shown, texts[0], proven, *texts[1:]))
     return Table("Settings", header, tuple(rows))
 
 
@@ -176,7 +201,27 @@ def _responses(record: Record) -> Table:
         mark = "met" if constraint.met else "not met"
         value = with_unit(f"{constraint.value:.4g}", "at its worst in the room")
         rows.append((constraint.name, value, "", f"{word} {constraint.bound:g}", mark))
+    together = record.uncertainty.conformance
+    if together is not None:
+        wandering = record.uncertainty.setting_error_included
+        how = "settings wandering in their room" if wandering else "settings held exactly"
+        rows.append(("All limits together", conformance_words(together), "", how, ""))
     return Table("What to expect there", header, tuple(rows))
+
+
+def _confirmation_table(choice: Choice) -> list[Block]:
+    if not choice.confirm or choice.status not in ("met", "provisional"):
+        return []
+    rows = tuple(
+        (
+            named(name, one.unit),
+            format_range(*one.one, (one.one[1] - one.one[0]) / 2),
+            format_range(*one.three, (one.three[1] - one.three[0]) / 2),
+        )
+        for name, one in choice.confirm.items()
+    )
+    header = ("Response", "A single run", "The mean of three runs")
+    return [Table("Confirmation runs should fall, all together with 95 %, in", header, rows)]
 
 
 def _confirmation(choice: Choice) -> str:
@@ -184,7 +229,7 @@ def _confirmation(choice: Choice) -> str:
         return f"Confirm before use: {choice.confirmation.text}. Provisional until then."
     if choice.status == "met":
         return (
-            "Confirm before use: run at least three batches at the setpoint; each must fall in the"
-            " single-batch range and meet every limit. Provisional until then."
+            "Confirm before use: run at least three batches at the setpoint; each run and their"
+            " mean must fall in the ranges below and meet every limit. Provisional until then."
         )
     return "There is no setting to confirm yet."

@@ -1,0 +1,181 @@
+"""How sure the setpoint is, how far it may move, what to try next: the parts after the limits."""
+
+from __future__ import annotations
+
+from wideberth.chain.record import Record
+from wideberth.report.blocks import Block, Bullets, Drawing, Heading, Paragraph, Table
+from wideberth.report.numbers import format_range, format_setting, format_value, named, with_unit
+from wideberth.report.ridge_figure import draw_ridge
+from wideberth.report.shares_figure import draw_shares
+from wideberth.report.style import to_svg
+from wideberth.report.wording import (
+    SINGLY_WARNING,
+    ends_words,
+    location_sentence,
+    loss_sentence,
+    shares_words,
+    together_sentences,
+    window_sentence,
+)
+
+
+def assurance(record: Record) -> list[Block]:
+    """Write the parts on doubt, window, wandering settings and runs to try."""
+    return [*_doubt(record), *_window(record), *_wandering(record), *_beyond(record)]
+
+
+def _doubt(record: Record) -> list[Block]:
+    sure, study = record.uncertainty, record.study
+    blocks: list[Block] = [Heading(3, "How sure this is")]
+    if sure.reason:
+        return [*blocks, Paragraph(f"Nothing can be said: {sure.reason}.")]
+    blocks.append(
+        Paragraph(
+            f"The same question was asked of {sure.draws} sets of equations that the runs allow as"
+            " well; the spread of the answers is the doubt."
+        )
+    )
+    said = (location_sentence(sure), *together_sentences(sure), *loss_sentence(sure, record.choice))
+    levels = tuple(
+        f"{n}: best in {100 * s:.0f} of 100 draws." for n, s in sure.level_shares.items()
+    )
+    findings = tuple(finding.text for finding in sure.findings)
+    blocks.append(Bullets("", (*said, *levels, *findings)))
+    if sure.region is not None and record.choice.setpoint is not None:
+        rows = tuple(
+            (
+                named(factor.name, factor.unit),
+                format_setting(study, factor.name, record.choice.setpoint[factor.name]),
+                ends_words(factor, sure.region.ranges[factor.name]),
+            )
+            for factor in study.numeric
+        )
+        caption = f"Where the optimum may lie, {100 * sure.region.level:g} % region"
+        header = ("Factor", "Setting", "Smallest to largest in the region")
+        blocks.append(Table(caption, header, rows))
+    return [*blocks, *_corrected(record)]
+
+
+def _corrected(record: Record) -> list[Block]:
+    optimism = record.uncertainty.optimism
+    if optimism is None:
+        return []
+    rows = []
+    for name, (bias, corrected) in optimism.responses.items():
+        prediction = record.choice.predictions[name]
+        interval = prediction.mean_interval
+        half = (interval[1] - interval[0]) / 2 if interval else None
+        if not half:
+            continue
+        unit = prediction.unit
+        rows.append(
+            (
+                named(name, unit),
+                format_value(prediction.mean, half),
+                format_value(bias, half),
+                format_value(corrected, half),
+            )
+        )
+    header = ("Response", "Fitted mean", "Too high by about", "Corrected")
+    return [Table("Expected values without what the search flatters", header, tuple(rows))]
+
+
+def _window(record: Record) -> list[Block]:
+    box = record.window
+    blocks: list[Block] = [Heading(3, "Operating window"), Paragraph(window_sentence(box))]
+    if box.status == "none":
+        return [*blocks, Bullets("What must give", box.must_give, tone="doubt")]
+    rows = tuple(
+        (
+            named(f.name, f.unit),
+            ends_words(f, box.settable[f.name], inwards=True),
+            box.stopped_by[f.name].low or "nothing",
+            box.stopped_by[f.name].high or "nothing",
+            ends_words(f, box.singly[f.name], inwards=True),
+        )
+        for f in record.study.numeric
+    )
+    header = ("Factor", "Window", "Stopped below by", "Stopped above by", "Taken alone")
+    return [*blocks, Table("The window and what stops it", header, rows), Paragraph(SINGLY_WARNING)]
+
+
+def _wandering(record: Record) -> list[Block]:
+    answer = record.robustness
+    if not any(one.shares for one in answer.responses.values()):
+        return [Heading(3, "When settings wander"), Paragraph(answer.advice)]
+    rows = []
+    for name, one in answer.responses.items():
+        size = one.sd_total or one.sd_setting or None
+        rows.append(
+            (
+                named(name, one.unit),
+                format_value(one.shift, size),
+                format_value(one.sd_setting, size),
+                "not known" if one.sd_batch is None else format_value(one.sd_batch, size),
+                format_range(*one.worst, size),
+                shares_words(one.shares),
+            )
+        )
+    header = (
+        "Response",
+        "Shift of the mean",
+        "sd from settings",
+        "sd from batches",
+        "Mean anywhere in the room",
+        "Made by",
+    )
+    figure = to_svg(draw_shares(answer), "shares")
+    alt = "; ".join(f"{n}: {shares_words(one.shares)}" for n, one in answer.responses.items())
+    return [
+        Heading(3, "When settings wander"),
+        Paragraph(
+            "A tolerance is taken as a normal error with 95 % inside; what it does to every"
+            f" response follows exactly from the equations. {answer.advice}"
+        ),
+        Drawing(figure, f"Shares of variance by factor: {alt}.", "What setting error adds."),
+        Table("What wandering settings do", header, tuple(rows)),
+    ]
+
+
+def _beyond(record: Record) -> list[Block]:
+    answer, study = record.outward, record.study
+    if not answer.runs:
+        return []
+    names = list(answer.runs[0].predictions)
+    rows = []
+    for run in answer.runs:
+        cells = [f"{run.reach:g}"]
+        cells += [format_setting(study, f.name, run.setting[f.name]) for f in study.factors]
+        for name in names:
+            one = run.predictions[name]
+            interval = one.mean_interval
+            half = (interval[1] - interval[0]) / 2 if interval else None
+            text = format_value(one.mean, half or None)
+            cells.append(f"{text} ({format_range(*interval, half)})" if interval and half else text)
+        cells.append(f"{run.leverage_ratio:.1f}")
+        rows.append(tuple(cells))
+    units = {model.response: model.unit for model in record.models.models}
+    header = (
+        "Reach",
+        *(named(f.name, f.unit) for f in study.factors),
+        *(f"{named(name, units[name])}, 95 %" for name in names),
+        "Leverage ratio",
+    )
+    last = answer.runs[-1]
+    return [
+        Heading(3, "Runs to try beyond what was explored"),
+        Paragraph(
+            "The best compromise leans on the edge of what was tried, and the equations rise beyond"
+            f" it: at {with_unit(f'{last.reach:g}', 'times')} the explored reach the overall"
+            f" desirability would be {last.desirability or 0:.3f}. That is extrapolation. These are"
+            " runs to try, one after the other and under supervision, never settings to use; stop"
+            " where a result falls outside its interval. Above 1 the leverage ratio says how much"
+            " less is known there than at any run."
+        ),
+        Drawing(
+            to_svg(draw_ridge(answer), "ridge"),
+            f"Mean and 95 % band of {', '.join(names)} along the ridge of the compromise.",
+            "Along the ridge; dashed beyond the explored edge, circles are the runs to try.",
+        ),
+        Table("Runs to try, not settings to use", header, tuple(rows)),
+    ]
