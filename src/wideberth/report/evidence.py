@@ -97,9 +97,10 @@ def _maps(record: Record) -> list[Block]:
         Heading(3, "Where the limits run"),
         Paragraph(
             "Each map shows two factors through the setpoint, the others held there:"
-            f" {_shading(record)}. Lines are where a guarded limit is just met, named; dots are runs, the dotted line"
-            " bounds what was explored. The small box is the room, the dashed box the window, the"
-            " dash-dotted line the region of the optimum seen along the other factors."
+            f" {_shading(record)}. Lines are where a guarded limit is just met, named; dots are"
+            " runs, the dotted line bounds what was explored. The small box is the room, the"
+            " dashed box the window, the dash-dotted line the region of the optimum seen along"
+            " the other factors."
             + (" The three factors that move the margins most are shown." if several else "")
         ),
     ]

@@ -96,8 +96,9 @@ def draw_map(
     with house_style():
         figure, ax = axes_or_new(ax, (WIDTH * 0.66, WIDTH * 0.52))
         _shade(figure, ax, view)
+        taken = [_shown_setting(choice, view)]
         for i, limit in enumerate(view.margins):
-            _limit_line(ax, view, limit, i, study)
+            _limit_line(ax, view, limit, i, study, taken)
         if view.depth.min() < 0 < view.depth.max():
             ax.contour(
                 view.across_actual,
@@ -245,7 +246,15 @@ def _smallest(view: FactorMap) -> FloatArray | None:
     return smallest
 
 
-def _limit_line(ax: Axes, view: FactorMap, limit: LimitMap, i: int, study: Study) -> None:
+def _limit_line(
+    ax: Axes,
+    view: FactorMap,
+    limit: LimitMap,
+    i: int,
+    study: Study,
+    taken: list[FloatArray],
+) -> None:
+    """Draw where a limit is just met, with its name at a place that is not taken yet."""
     if not (limit.margin.min() < 0 < limit.margin.max()):
         return
     unit = next(r.unit for r in study.responses if r.name == limit.response)
@@ -258,7 +267,33 @@ def _limit_line(ax: Axes, view: FactorMap, limit: LimitMap, i: int, study: Study
         linewidths=1.4,
         linestyles=[LINES[i % len(LINES)]],
     )
-    ax.clabel(lines, fmt={0.0: _limit_name(limit, unit)}, fontsize=7, inline=True)
+    place = _clear_place(np.concatenate([s for s in lines.allsegs[0] if len(s)]), view, taken)
+    taken.append(place)
+    ax.clabel(
+        lines,
+        fmt={0.0: _limit_name(limit, unit)},
+        fontsize=7,
+        inline=True,
+        manual=[(float(place[0]), float(place[1]))],
+    )
+
+
+def _shown_setting(choice: Choice, view: FactorMap) -> FloatArray:
+    setpoint = choice.setpoint or {}
+    return np.array([setpoint.get(name, 0.0) for name in (view.across, view.up)], dtype=float)
+
+
+def _clear_place(line: FloatArray, view: FactorMap, taken: list[FloatArray]) -> FloatArray:
+    """Choose the place on a line (n, 2) for its name: off the frame, far from what is taken."""
+    low = np.array([view.across_actual[0], view.up_actual[0]])
+    width = np.array([view.across_actual[-1], view.up_actual[-1]]) - low
+    share = (line - low) / width
+    away = np.min([np.sqrt((((line - place) / width) ** 2).sum(axis=1)) for place in taken], axis=0)
+    from_frame = np.minimum(share, 1 - share).min(axis=1)
+    # near the frame a name would be cut off; beyond some distance more is no clearer
+    clear = np.minimum(away, 0.45) + 2 * np.minimum(from_frame, 0.2)
+    best: FloatArray = line[int(clear.argmax())]
+    return best
 
 
 def _mark_runs(ax: Axes, study: Study, view: FactorMap) -> None:

@@ -36,6 +36,12 @@ _VERDICT: dict[Status, str] = {
 }
 
 
+_BEYOND = (
+    "Better settings may lie beyond what was tried: the evidence lists runs to try there, which"
+    " are no settings to use."
+)
+
+
 def page_one(record: Record) -> tuple[Block, ...]:
     """Write the blocks of page one."""
     study, choice = record.study, record.choice
@@ -48,6 +54,9 @@ def page_one(record: Record) -> tuple[Block, ...]:
     ]
     blocks += [Bullets("", tuple(c.text for c in choice.conflicts))] if choice.conflicts else []
     doubts = tuple(finding.text for finding in _spoiling(record))
+    if choice.edge:
+        beyond = () if not record.outward.runs else (_BEYOND,)
+        blocks.append(Bullets("Conditions", (*choice.edge, *beyond), tone="doubt"))
     if doubts:
         blocks.append(Bullets("What weakens this answer", doubts, tone="doubt"))
     blocks += [_settings(record), _responses(record)]
@@ -56,7 +65,6 @@ def page_one(record: Record) -> tuple[Block, ...]:
     blocks += [
         Bullets("What is not known", (_location(record), *unknowns(study))),
         Paragraph(_confirmation(choice)),
-        *_confirmation_table(choice),
         Bullets("Cautions", CAUTIONS),
         SignOff(
             (
@@ -94,8 +102,10 @@ def _identity(record: Record) -> Table:
     context = study.context
     document = " ".join(part for part in (context.document, context.revision) if part)
     rows = [
-        ("Product", context.product or "not stated"),
-        ("Equipment", context.equipment or "not stated"),
+        (
+            "Product, equipment",
+            f"{context.product or 'not stated'}, {context.equipment or 'not stated'}",
+        ),
         (
             "Scale run / intended",
             f"{context.scale_run or 'not stated'} / {context.scale_intended or 'not stated'}",
@@ -173,15 +183,14 @@ def _responses(record: Record) -> Table:
     header = (
         "Response",
         "Expected, 95 % interval",
-        "Single batches, 95 %",
+        "One run; mean of 3 *",
         "Limit and its guard",
         "Margin over the room",
     )
     rows = []
     for name, prediction in choice.predictions.items():
-        interval, batch = prediction.mean_interval, prediction.batch_interval
+        interval = prediction.mean_interval
         half = (interval[1] - interval[0]) / 2 if interval else None
-        spread = (batch[1] - batch[0]) / 2 if batch else None
         expected = format_value(prediction.mean, half or None)
         if interval and half:
             expected += f" ({format_range(*interval, half)})"
@@ -189,7 +198,7 @@ def _responses(record: Record) -> Table:
             expected += " (no interval: no degrees of freedom)"
         else:
             expected += " (exact)"
-        single = format_range(*batch, spread) if batch and spread else "none stated"
+        single = _runs_should_fall(choice, name)
         own = [verdict for verdict in choice.limits if verdict.response == name]
         limits = "; ".join(
             f"{limit_words(v)}: {guard_sentence(v.guard, v.confidence, v.share)}" for v in own
@@ -204,24 +213,17 @@ def _responses(record: Record) -> Table:
     together = record.uncertainty.conformance
     if together is not None:
         wandering = record.uncertainty.setting_error_included
-        how = "settings wandering in their room" if wandering else "settings held exactly"
+        how = "settings wandering within their tolerances" if wandering else "settings held exactly"
         rows.append(("All limits together", conformance_words(together), "", how, ""))
     return Table("What to expect there", header, tuple(rows))
 
 
-def _confirmation_table(choice: Choice) -> list[Block]:
-    if not choice.confirm or choice.status not in ("met", "provisional"):
-        return []
-    rows = tuple(
-        (
-            named(name, one.unit),
-            format_range(*one.one, (one.one[1] - one.one[0]) / 2),
-            format_range(*one.three, (one.three[1] - one.three[0]) / 2),
-        )
-        for name, one in choice.confirm.items()
-    )
-    header = ("Response", "A single run", "The mean of three runs")
-    return [Table("Confirmation runs should fall, all together with 95 %, in", header, rows)]
+def _runs_should_fall(choice: Choice, name: str) -> str:
+    expected = choice.confirm.get(name)
+    if expected is None:
+        return "known exactly" if choice.predictions[name].mean_interval else "not known"
+    ends = (expected.one, expected.three)
+    return "; ".join(format_range(low, high, (high - low) / 2) for low, high in ends)
 
 
 def _confirmation(choice: Choice) -> str:
@@ -230,6 +232,7 @@ def _confirmation(choice: Choice) -> str:
     if choice.status == "met":
         return (
             "Confirm before use: run at least three batches at the setpoint; each run and their"
-            " mean must fall in the ranges below and meet every limit. Provisional until then."
+            " mean must fall in the ranges marked *, which hold for all responses together with"
+            " 95 %, and meet every limit. Provisional until then."
         )
     return "There is no setting to confirm yet."

@@ -131,8 +131,8 @@ def batches_in_100(share: float) -> str:
 def conformance_words(one: Conformance) -> str:
     """Word a conformance with its lower bound."""
     low = int(100 * min(one.lower, 0.99))
-    least = f"at least {low}, with 95 % confidence" if low >= 1 else "perhaps none"
-    block = f"; worst block {one.block}" if one.block else ""
+    least = f"at least {low}, 95 % sure" if low >= 1 else "perhaps none"
+    block = f"; worst in {one.block}" if one.block else ""
     return f"{batches_in_100(one.mean)} ({least}{block})"
 
 
@@ -162,8 +162,8 @@ def location_sentence(sure: Uncertainty) -> str:
             " what may be searched."
         )
     sentence = (
-        f"With {100 * sure.region.level:g} % confidence the optimum of the true equations lies in"
-        f" a region that fills {filled} of what may be searched"
+        f"The optimum of the true equations lies, {100 * sure.region.level:g} % sure, in a region"
+        f" that fills {filled} of what may be searched"
     )
     edge = sure.edge_share or 0.0
     if edge >= 0.2:
