@@ -19,11 +19,14 @@ if TYPE_CHECKING:
     from wideberth.decide.recommend import recommend
     from wideberth.errors import InputError, NumericalError, RefusedError, WideberthError
     from wideberth.fit.models import fit
+    from wideberth.operate.robustness import robustness
+    from wideberth.operate.window import window
     from wideberth.report.memo import memo_html, write_memo
     from wideberth.study.checking import check_study
     from wideberth.study.reading import read_study
     from wideberth.study.template import start_study
     from wideberth.surface.ridge import shape
+    from wideberth.uncertainty.assess import uncertainty
 
 __version__ = "0.1.0"
 
@@ -38,8 +41,11 @@ __all__ = [
     "memo_html",
     "read_study",
     "recommend",
+    "robustness",
     "shape",
     "start_study",
+    "uncertainty",
+    "window",
     "write_memo",
 ]
 
@@ -54,8 +60,11 @@ _HOMES = {
     "memo_html": "report.memo",
     "read_study": "study.reading",
     "recommend": "decide.recommend",
+    "robustness": "operate.robustness",
     "shape": "surface.ridge",
     "start_study": "study.template",
+    "uncertainty": "uncertainty.assess",
+    "window": "operate.window",
     "write_memo": "report.memo",
 }
 

@@ -31,7 +31,17 @@ FLOORS = {
     "cli": 12,
     "desk": 12,
 }
-COMMANDS = ("start", "check", "fit", "shape", "recommend", "memo")
+COMMANDS = (
+    "start",
+    "check",
+    "fit",
+    "shape",
+    "recommend",
+    "uncertainty",
+    "window",
+    "robustness",
+    "memo",
+)
 HEAVY = ("numpy", "scipy", "pandas", "statsmodels", "cvxpy", "matplotlib", "pydantic", "jinja2")
 PRESENTING = ("matplotlib", "click", "jinja2")
 
@@ -91,7 +101,8 @@ def test_the_doorway_offers_what_it_declares():
 def test_the_step_fit_stays_the_step_after_its_room_was_imported():
     code = (
         "import wideberth.fit.records, wideberth as wb; assert callable(wb.fit);"
-        "from wideberth.fit.models import fit; assert wb.fit is fit"
+        "from wideberth.fit.models import fit; assert wb.fit is fit;"
+        "import wideberth.uncertainty.records; assert callable(wb.uncertainty)"
     )
     subprocess.run([sys.executable, "-c", code], check=True)
 

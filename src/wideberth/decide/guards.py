@@ -18,12 +18,14 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 from numpy.polynomial import Chebyshev
+from numpy.polynomial.chebyshev import chebval
 from scipy.special import ndtri, stdtrit
 
 from wideberth.fit.tolerance import tolerance_factor
 from wideberth.study.records import FloatArray, GuardKind
 
 _DEGREE = 28
+_LEAST = 1e-12
 
 
 @dataclass(frozen=True, slots=True)
@@ -66,43 +68,68 @@ class Guard:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class SmoothGuard:
-    """K with two derivatives in h, accurate to about 1e-10 between two leverages.
+    """K with two derivatives in h: exact for ``mean`` and ``batch``, to about 1e-10 for ``share``.
 
-    Outside ``[low, high]`` (square roots of h) the factor goes on as a straight line in sqrt(h),
-    so that a search that strays stays well-behaved.
+    A share's factor is a Chebyshev series in sqrt(h) between ``low`` and ``high``; outside it goes
+    on as a straight line, so that a search that strays stays well-behaved.
+
+    Attributes
+    ----------
+    low, high : float
+        Square roots of leverages.
+    series : ndarray, shape (degree + 1, 3)
+        Coefficients of K and of its first two derivatives in sqrt(h); unused for other kinds.
     """
 
     guard: Guard
     low: float
     high: float
-    curve: Chebyshev
-    slope: Chebyshev
-    bend: Chebyshev
+    series: FloatArray
 
     @classmethod
     def between(cls, guard: Guard, least: float, largest: float) -> SmoothGuard:
-        """Fit K over leverages from ``least`` to ``largest``, with a margin on both sides."""
+        """Cover leverages from ``least`` to ``largest``, with a margin on both sides."""
         low, high = 0.6 * np.sqrt(least), 1.5 * np.sqrt(largest)
-        curve = Chebyshev.interpolate(
-            lambda root: guard.factor(root * root), _DEGREE, domain=[low, high]
-        )
-        return cls(guard, float(low), float(high), curve, curve.deriv(1), curve.deriv(2))
+        series = np.zeros((_DEGREE + 1, 3))
+        if guard.kind == "share":
+            curve = Chebyshev.interpolate(
+                lambda root: guard.factor(root * root), _DEGREE, domain=[low, high]
+            )
+            for order in range(3):
+                part = curve.deriv(order).coef if order else curve.coef
+                series[: len(part), order] = part
+        return cls(guard, float(low), float(high), series)
 
     def value(self, leverage: FloatArray) -> FloatArray:
         """Give K at leverages h, of h's shape."""
-        root = np.sqrt(np.maximum(leverage, 1e-12))
+        if self.guard.kind != "share":
+            return self.guard.factor(np.maximum(leverage, _LEAST))
+        root = np.sqrt(np.maximum(leverage, _LEAST))
         inside = np.clip(root, self.low, self.high)
-        factor: FloatArray = self.curve(inside)
+        factor: FloatArray = self._series(inside, 1)[0]
         if (inside != root).any():
-            factor = factor + self.slope(inside) * (root - inside)
+            factor = factor + self._series(inside, 2)[1] * (root - inside)
         return factor
 
     def derivatives(self, leverage: FloatArray) -> tuple[FloatArray, FloatArray, FloatArray]:
         """Give K, dK/dh and d2K/dh2 at leverages h, each of h's shape."""
-        root = np.sqrt(np.maximum(leverage, 1e-12))
+        h = np.maximum(leverage, _LEAST)
+        if self.guard.kind != "share":
+            # K is t sqrt(h) or t sqrt(1 + h), so each derivative is the last one over 2 (1 +) h
+            base = h if self.guard.kind == "mean" else 1.0 + h
+            value = self.guard.factor(h)
+            slope: FloatArray = value / (2 * base)
+            return value, slope, -slope / (2 * base)
+        root = np.sqrt(h)
         inside = np.clip(root, self.low, self.high)
-        first = self.slope(inside)
-        second = np.where(inside == root, self.bend(inside), 0.0)
-        value = self.curve(inside) + first * (root - inside)
+        factor, first, second = self._series(inside, 3)
+        second = np.where(inside == root, second, 0.0)
+        value = factor + first * (root - inside)
         # chain rule from v = sqrt(h): v' = 1/(2v), v'' = -1/(4 v^3)
         return value, first / (2 * root), second / (4 * root**2) - first / (4 * root**3)
+
+    def _series(self, root: FloatArray, n: int) -> FloatArray:
+        """Sum K and its derivatives in sqrt(h), the first n of them: shape (n, ...)."""
+        place = (2 * root - self.low - self.high) / (self.high - self.low)
+        result: FloatArray = np.asarray(chebval(place, self.series[:, :n]), dtype=np.float64)
+        return result

@@ -214,12 +214,17 @@ def _settle_ties(arena: Arena, best: Found) -> Found:
         return best
     by_margin = bool(arena.limits)
     tied = np.concatenate([best.x[None, :], best.equals])
-    chosen, height = best, -np.inf
-    for x in tied:
-        floor = np.minimum(goal_targets(arena, goal_values(arena, x[None, :]))[0], 1.0) - _TIE
-        aim = tie_break(np.maximum(floor, 0.0), best.score - _SAME, by_margin=by_margin)
-        found = _search(arena, aim, best.cuts, [x])
-        if found is not None and found.score > height + _SAME:
+    chosen, height, cuts = best, -np.inf, best.cuts
+    floors = np.clip(goal_targets(arena, goal_values(arena, tied)), None, 1.0) - _TIE
+    # settings that reach every goal alike ask the same question
+    for i in _apart(floors, _FLAT, len(floors)):
+        alike = tied[np.abs(floors - floors[i]).max(axis=1) <= _FLAT]
+        aim = tie_break(np.maximum(floors[i], 0.0), best.score - _SAME, by_margin=by_margin)
+        found = _search(arena, aim, cuts, list(alike))
+        if found is None:
+            continue
+        cuts = found.cuts
+        if found.score > height + _SAME:
             score = float(BEST.score(arena, found.x[None, :], found.worst[:, None])[0])
             chosen, height = replace(found, score=score, equals=tied), found.score
     away = ((chosen.equals - chosen.x) ** 2).sum(axis=1) > _FLAT**2

@@ -26,7 +26,7 @@ _ROUNDS = 25
 _NEAR = 1.5
 _LEAST_WIDTH = 1e-6
 _MARGIN = 1e-4
-_SHRINKS = (0.0, 1e-7, 1e-6, 1e-5, 1e-4, 1e-3, 0.01, 0.03, 0.1, 0.2, 0.4, 0.7)
+_SHRINKS = (1e-5, 1e-3, 0.03, 0.2, 0.6)
 _FINEST = 0.01
 _BISECTIONS = 16
 
@@ -70,35 +70,68 @@ def worst_over(row: HardRow, box: Box) -> float:
     return worst_in_room(row, Room(half, half), middle)[0]
 
 
-def largest_box(ground: Ground) -> Box:
-    """Search for a large box that holds everything; the best of several starts, not yet proven."""
+def largest_box(ground: Ground) -> tuple[Box, int]:
+    """Find a large box that holds everything, proven, with the boxes that the proofs needed.
+
+    The best of several starts; the core itself must hold.
+    """
     k = len(ground.free)
     forward = np.concatenate([np.arange(k), np.arange(k) + k])
     grown = [_grown(ground, order) for order in (forward, forward[::-1], np.roll(forward, k // 2))]
-    boxes = [ground.core]
-    for start in (ground.core, *grown):
-        boxes += [start, _exchanged(ground, start)]
-    held = [box for box in boxes if _holds(ground, box)]
-    return max(held or [ground.core], key=lambda box: _log_volume(ground, box))
+    tried = [_exchanged(ground, start) for start in (ground.core, *grown)]
+    tried = sorted([*tried, *grown], key=lambda box: -_log_volume(ground, box))
+    best, boxes = ground.core, 0
+    for box in tried:
+        if _log_volume(ground, box) <= _log_volume(ground, best):
+            break
+        held, more = proven(ground, box)
+        boxes += more
+        if held is not None and _log_volume(ground, held) > _log_volume(ground, best):
+            best = held
+    return best, boxes
 
 
 def proven(ground: Ground, box: Box) -> tuple[Box | None, int]:
-    """Prove a box, drawn in toward the core where the proof asks for it; with the boxes needed."""
-    boxes = 0
-    for shrink in (*_SHRINKS, 1.0):
-        tried = _toward(ground.core, box, 1.0 - shrink)
-        if not _planes_hold(ground, tried):
-            continue
-        holds = True
-        for row in ground.rows:
-            proof = prove_over_box(row, tried.low, tried.high, HOLDS)
-            boxes += proof.boxes
-            if not proof.proven:
-                holds = False
-                break
-        if holds:
+    """Prove a box, drawn in toward the core as little as it takes; with the boxes needed.
+
+    ``None`` when not even the core can be proven.
+    """
+    held, boxes = _proof(ground, box)
+    if held:
+        return box, boxes
+    inner, outer = 0.0, 1.0
+    for _ in range(_BISECTIONS):
+        share = (inner + outer) / 2
+        if _holds(ground, _toward(ground.core, box, share)):
+            inner = share
+        else:
+            outer = share
+    for share in (inner, *(inner * (1.0 - shrink) for shrink in _SHRINKS), 0.0):
+        tried = _toward(ground.core, box, share)
+        held, more = _proof(ground, tried)
+        boxes += more
+        if held:
             return tried, boxes
     return None, boxes
+
+
+def _proof(ground: Ground, box: Box) -> tuple[bool, int]:
+    """Prove every plane and row over one box; with the boxes needed."""
+    if not _planes_hold(ground, box):
+        return False, 0
+    boxes = 0
+    for row in ground.rows:
+        proof = prove_over_box(row, box.low, box.high, HOLDS)
+        boxes += proof.boxes
+        if not proof.proven:
+            return False, boxes
+    return True, boxes
+
+
+def _holds(ground: Ground, box: Box) -> bool:
+    return _planes_hold(ground, box) and all(
+        worst_over(row, box) >= ground.level for row in ground.rows
+    )
 
 
 def alone(ground: Ground, j: int) -> Box | None:
@@ -106,13 +139,13 @@ def alone(ground: Ground, j: int) -> Box | None:
     box = ground.core
     for side in (0, 1):
         wide = _pushed(ground, box, j, side, np.inf)
-        if _holds(ground, wide):
+        if _seems_to_hold(ground, wide):
             box = wide
             continue
         inner, outer = 0.0, 1.0
         for _ in range(_BISECTIONS):
             share = (inner + outer) / 2
-            if _holds(ground, _toward(box, wide, share)):
+            if _seems_to_hold(ground, _toward(box, wide, share)):
                 inner = share
             else:
                 outer = share
@@ -150,16 +183,13 @@ def _broken_by_push(
         low[j] -= width
     else:
         high[j] += width
-    worst = [worst_over(row, Box(low, high)) for row in ground.rows]
+    x = _pattern(Box(low, high), ground.free)
+    worst = [float(row.value(x).min()) for row in ground.rows]
     slack = plane_slack(ground, Box(low, high))
     broken = [(w, n) for w, n in zip(worst, names[: len(worst)], strict=True) if w < ground.level]
     # a bound in coded units counts like an edge: it is named before a row only when alone
     broken += [(s - 1e3, n) for s, n in zip(slack, names[len(worst) :], strict=True) if s < -1e-9]
     return min(broken)[1] if broken else ""
-
-
-def _holds(ground: Ground, box: Box) -> bool:
-    return _planes_hold(ground, box) and all(worst_over(row, box) >= HOLDS for row in ground.rows)
 
 
 def plane_slack(ground: Ground, box: Box) -> FloatArray:
@@ -210,14 +240,15 @@ def _grown(ground: Ground, order: FloatArray) -> Box:
                 continue
             tried = _pushed(ground, box, place % k, place // k, float(steps[place]))
             moved = np.abs(tried.low - box.low).max() + np.abs(tried.high - box.high).max()
-            if moved > _FINEST / 4 and _quickly_holds(ground, tried):
+            if moved > _FINEST / 4 and _seems_to_hold(ground, tried):
                 box = tried
             else:
                 steps[place] /= 2
     return box
 
 
-def _quickly_holds(ground: Ground, box: Box) -> bool:
+def _seems_to_hold(ground: Ground, box: Box) -> bool:
+    """Check a box at its corners and the middles of its faces; the proof comes later."""
     if not _planes_hold(ground, box):
         return False
     x = _pattern(box, ground.free)
@@ -227,11 +258,12 @@ def _quickly_holds(ground: Ground, box: Box) -> bool:
 def _pattern(box: Box, free: BoolArray) -> FloatArray:
     """Corners of a box, with the middles of faces for few factors: (n, k)."""
     loose = np.flatnonzero(box.high > box.low)
+    if not len(loose):
+        return box.low[None, :]
     choices = [0.0, 0.5, 1.0] if len(loose) <= 5 else [0.0, 1.0]
     grid = np.stack(np.meshgrid(*[choices] * len(loose), indexing="ij"), axis=-1)
-    share = np.zeros((grid.size // max(len(loose), 1) if len(loose) else 1, len(free)))
-    if len(loose):
-        share[:, loose] = grid.reshape(-1, len(loose))
+    share = np.zeros((grid.size // len(loose), len(free)))
+    share[:, loose] = grid.reshape(-1, len(loose))
     return box.low + share * (box.high - box.low)
 
 

@@ -70,8 +70,7 @@ def window_around(problem: Problem, choice: Choice, *, progress: Progress = sile
     if core is None or not np.array_equal(core.low, ground.core.low):
         return _none(choice, _must_give(problem, ground))
     progress("window", 0.2)
-    box, more = proven(ground, largest_box(ground))
-    box = box or ground.core
+    box, more = largest_box(ground)
     progress("window", 0.7)
     names = (*(_row_name(problem, row.limit) for row in ground.rows), *problem.region.names)
     stops = stoppers(ground, box, names)
