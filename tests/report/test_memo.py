@@ -5,6 +5,7 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+from scipy import stats
 
 from support.build import central_composite, less, make_study, more, small_composite
 from wideberth.chain.as_json import dumps_record, record_json
@@ -125,3 +126,60 @@ def test_numbers_are_rounded_to_what_they_are_worth(value, uncertainty, text):
 
 def test_ranges_share_their_digits():
     assert format_range(93.5247, 94.1569, 0.316) == "93.52 to 94.16"
+
+
+def test_page_one_carries_window_conformance_location_and_confirmation():
+    record = _record(_study(limits={"z": Limit(None, 13.0, "share")}, goals=GOALS, tolerance=0.1))
+    first = memo_html(record).split("Evidence")[0]
+    for words in (
+        "Proven window",
+        "All limits together",
+        "of 100 batches",
+        "95 % sure",
+        "One run; mean of 3",
+        "all responses together",
+    ):
+        assert words in first
+    low, high = record.window.settable["f0"]
+    assert f"{np.ceil(low * 100 - 1e-5) / 100:.2f} to" in first
+    assert high > record.choice.setpoint["f0"]
+
+
+def test_a_setting_on_the_edge_gets_runs_to_try_and_a_figure():
+    x = central_composite(2)
+    rng = np.random.default_rng(1)
+    y = 20 + 3 * x[:, 0] + x[:, 1] + 0.2 * rng.standard_normal(len(x))
+    study = make_study(
+        x, {"y": y}, goals={"y": more(5.0, 40.0)}, allowed={"f0": (-4, 4), "f1": (-4, 4)}
+    )
+    text = memo_html(_record(study))
+    assert "Runs to try beyond what was explored" in text
+    assert "never settings to use" in text
+    assert "Conditions" in text.split("Evidence")[0]
+
+
+def test_a_study_without_degrees_of_freedom_says_so_instead_of_numbers():
+    x = central_composite(2, n_centre=1)[[0, 1, 2, 3, 4, 8]]
+    y = np.array([1.0, 2.0, 3.0, 5.0, 4.0, 2.5])
+    record = _record(make_study(x, {"y": y}, goals={"y": more(0.0, 6.0)}))
+    text = memo_html(record)
+    assert "Nothing can be said" in text
+    assert "degrees of freedom" in text.split("Evidence")[0]
+
+
+def test_confirmation_ranges_are_joint_prediction_intervals():
+    study = _study(limits={"z": Limit(None, 13.0, "batch")}, goals=GOALS)
+    record = _record(study)
+    place = np.array(list(record.choice.setpoint.values()))
+    f = np.r_[1.0, place, place**2, place[0] * place[1]]
+    for name in ("y", "z"):
+        model = record.models[name]
+        h = f @ model.covariance @ f
+        t = stats.t.ppf(1 - 0.05 / 4, model.df_residual)
+        for n_runs, ends in (
+            (1, record.choice.confirm[name].one),
+            (3, record.choice.confirm[name].three),
+        ):
+            half = t * model.s * np.sqrt(h + 1 / n_runs)
+            mean = f @ model.coefficients
+            assert ends == pytest.approx((mean - half, mean + half), rel=1e-9)
