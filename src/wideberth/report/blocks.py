@@ -41,11 +41,12 @@ class Table:
 
 @dataclass(frozen=True, slots=True)
 class Drawing:
-    """A figure as SVG, with a text for those who cannot see it."""
+    """A figure as SVG, with a text for those who cannot see it; ``half`` puts two side by side."""
 
     svg: str
     alt: str
     caption: str
+    half: bool = False
 
 
 @dataclass(frozen=True, slots=True)

@@ -62,29 +62,20 @@ def _limits(record: Record) -> list[Block]:
         alt = "; ".join(f"{v.response} {v.side} limit: margin {v.margin:.2f}" for v in judged)
         figure = to_svg(draw_margins(choice.limits), "margins")
         blocks.append(Drawing(figure, alt, "Margins of all limits."))
+    blocked = any(v.block for v in choice.limits)
     rows = tuple(
         (
             f"{v.response} {v.side}",
             guard_sentence(v.guard, v.confidence, v.share),
             f"{v.factor:.3f}",
             "not judged" if v.guarded is None else with_unit(format_value(v.guarded), v.unit),
-            v.block or "",
+            *((v.block or "",) if blocked else ()),
         )
         for v in choice.limits
     )
-    blocks.append(
-        Table(
-            "How each limit was judged",
-            (
-                "Limit",
-                "What the guard asks",
-                "Factor for the search",
-                "Guarded value at worst",
-                "Worst block",
-            ),
-            rows,
-        )
-    )
+    header = ("Limit", "What the guard asks", "Factor for the search", "Guarded value at worst")
+    last = ("Worst block",) if blocked else ()
+    blocks.append(Table("How each limit was judged", (*header, *last), rows))
     said = promise(choice)
     return [*blocks, Paragraph(said)] if said else blocks
 
@@ -123,6 +114,7 @@ def _maps(record: Record) -> list[Block]:
                 to_svg(figure, f"map {view.across} {view.up}"),
                 f"Map of {names} through the setpoint; limits: {limits}.",
                 f"{names} through the setpoint.",
+                half=bool(view.up),
             )
         )
     return blocks

@@ -94,7 +94,7 @@ def draw_map(
     a dashed box, the region of the optimum, seen along the other factors, a dash-dotted line.
     """
     with house_style():
-        figure, ax = axes_or_new(ax, (WIDTH * 0.66, WIDTH * 0.52))
+        figure, ax = axes_or_new(ax, (WIDTH * 0.49, WIDTH * 0.43))
         _shade(figure, ax, view)
         taken = [_shown_setting(choice, view)]
         for i, limit in enumerate(view.margins):
