@@ -5,7 +5,8 @@ import pytest
 
 from wideberth.decide.arena import HardRow
 from wideberth.decide.guards import Guard, SmoothGuard
-from wideberth.operate.proof import lowest_on_boxes, prove_over_box
+from wideberth.operate.proof import prove_over_box
+from wideberth.quadratic.box import lowest_on_boxes
 from wideberth.quadratic.terms import n_terms
 
 

@@ -37,6 +37,7 @@ _PENALTY = 20.0
 _TIE = 1e-8
 _SAME = 1e-7
 _FLAT = 1e-3
+_BASIN_WIDTH = 0.02
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -83,6 +84,19 @@ def find_best(arena: Arena) -> Found | None:
             return replace(least_poor, score=-np.inf)
         best = _search(arena, BEST, least_poor.cuts, [least_poor.x])
     return None if best is None else _settle_ties(arena, best)
+
+
+def local_optima(arena: Arena, best: Found) -> FloatArray:
+    """Give the optima of D that a search ends in, the best one first: (n, k), at most six.
+
+    They hold the rows at the places of the room that ``best`` met, no more.
+    """
+    starts = _screen(arena, BEST, best.cuts, [best.x])
+    values = hard_values(arena, best.cuts, starts)
+    targets = BEST.targets(arena, starts, values)
+    ended = refine(BEST.program(arena, best.cuts), starts, targets, arena.region.basis)
+    settings, _ = rank(arena, BEST, best.cuts, np.concatenate([best.x[None, :], ended.x]))
+    return settings[_apart(settings, _BASIN_WIDTH, _FOLLOWED)]
 
 
 def find_safest(arena: Arena) -> Found:

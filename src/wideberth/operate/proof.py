@@ -18,7 +18,7 @@ import numpy as np
 
 from wideberth.decide.arena import HardRow
 from wideberth.decide.guards import SmoothGuard
-from wideberth.quadratic.box import extreme_over_box
+from wideberth.quadratic.box import extreme_over_box, lowest_on_boxes
 from wideberth.quadratic.stack import Stack
 from wideberth.quadratic.terms import features, pairs
 from wideberth.study.records import FloatArray
@@ -104,25 +104,6 @@ def _bounds_at_once(
         moved = 2 * np.einsum("np,np->n", np.abs(pulled), reach) + rest
         bound -= row.weight * bent * moved * moved / 2
     return bound, value
-
-
-def lowest_on_boxes(slope: FloatArray, bend: FloatArray, halves: FloatArray) -> FloatArray:
-    """Bound ``slope'd + d'bend d`` from below for |d| <= halves: (n, k), (n, k, k) to (n,).
-
-    Products of two coordinates are shared between their squares in proportion to the half-widths;
-    each coordinate is then minimised exactly.
-    """
-    wide = halves > 0
-    safe = np.where(wide, halves, 1.0)
-    mixed = np.abs(bend)
-    diagonal = np.arange(bend.shape[1])
-    mixed[:, diagonal, diagonal] = 0.0
-    own = bend[:, diagonal, diagonal] - np.einsum("nij,nj->ni", mixed, halves) / safe
-    steep = np.abs(slope)
-    inside = np.where(own > 0, steep / np.where(own > 0, 2 * own, 1.0), np.inf)
-    step = np.where(wide, np.minimum(inside, halves), 0.0)
-    result: FloatArray = (-steep * step + own * step * step).sum(axis=1)
-    return result
 
 
 def _feature_reach(middles: FloatArray, halves: FloatArray) -> FloatArray:
