@@ -64,7 +64,7 @@ def command(
 
 def print_choice(choice: Choice, study: Study) -> None:
     """Print the answer on one screen, what spoils trust first."""
-    from wideberth.report.wording import CAUTIONS, promise, status_sentence
+    from wideberth.report.wording import CAUTIONS, promise, proof_sentence, status_sentence
 
     doubts = [finding for finding in choice.findings if finding.grade != "fine"]
     if doubts:
@@ -83,6 +83,9 @@ def print_choice(choice: Choice, study: Study) -> None:
         click.echo(f"Confirmation: {choice.confirmation.text}.")
     if choice.desirability is not None:
         click.echo(f"Overall desirability {choice.desirability:.3f} (1 is ideal).")
+    proven = proof_sentence(choice)
+    if proven:
+        click.echo(proven)
     for goal in choice.goals:
         if goal.defaulted:
             click.echo(f"Goal of {goal.response}: {goal.defaulted}.")

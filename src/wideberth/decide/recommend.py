@@ -26,6 +26,7 @@ from wideberth.decide.judge import (
     read_setting,
 )
 from wideberth.decide.problem import Mode, Problem, arena, build_problem
+from wideberth.decide.proving import Gains, possible_gains
 from wideberth.decide.records import Bare, Choice, Conflict, LimitVerdict, Status
 from wideberth.decide.region import inside
 from wideberth.decide.search import HOLDS, Found, find_best, find_nearest
@@ -38,13 +39,17 @@ from wideberth.study.records import Setting
 
 @dataclass(frozen=True, slots=True, eq=False)
 class _Answer:
-    """A setting found under one mode: free optimum and settable one, at one combination."""
+    """A setting found under one mode: free optimum and settable one, at one combination.
+
+    ``everywhere`` holds the free optimum of every combination of levels, ``None`` without one.
+    """
 
     levels: tuple[int, ...]
     mode: Mode
     free: Found
     settable: Found
     off_steps: bool = False
+    everywhere: tuple[tuple[tuple[int, ...], Found | None], ...] = ()
 
 
 def recommend(
@@ -145,9 +150,11 @@ def _best_answer(problem: Problem, mode: Mode) -> _Answer | None:
     """Find the best settable setting over all levels that holds every limit in this mode."""
     grid = settable_grid(problem.study.numeric, problem.tight)
     best: _Answer | None = None
+    everywhere: list[tuple[tuple[int, ...], Found | None]] = []
     for levels in problem.combinations:
         rows = arena(problem, levels, mode)
         free = find_best(rows)
+        everywhere.append((levels, free))
         if free is None:
             continue
         settable = on_steps(rows, grid, _aim(problem, free), free)
@@ -156,7 +163,7 @@ def _best_answer(problem: Problem, mode: Mode) -> _Answer | None:
         answer = _Answer(levels, mode, free, settable)
         if best is None or _order(answer) > _order(best):
             best = answer
-    return best
+    return None if best is None else replace(best, everywhere=tuple(everywhere))
 
 
 def _nearest_answer(problem: Problem, mode: Mode) -> _Answer:
@@ -226,18 +233,24 @@ def _describe(
     free = answer.free.x
     if rests_on_unusable(problem):
         status = "unsupported"
+    score = overall_desirability(problem, levels, x)
+    bare_score = overall_desirability(problem, levels, free)
+    gains = Gains(None, None)
+    if answer.everywhere and score is not None and bare_score is not None:
+        grid = settable_grid(study.numeric, problem.tight)
+        gains = possible_gains(problem, answer.mode, answer.everywhere, bare_score, score, grid)
     edge = () if asked else edge_sentences(study, rows, free)
     return Choice(
         status=status,
         asked=asked,
         seed=study.seed,
         setpoint=own_setting(study, levels, x),
-        desirability=overall_desirability(problem, levels, x),
-        proof_gap=None,
+        desirability=score,
+        proof_gap=gains.settable,
         unrounded=Bare(
             setpoint=own_setting(study, levels, free),
-            desirability=overall_desirability(problem, levels, free),
-            proof_gap=None,
+            desirability=bare_score,
+            proof_gap=gains.free,
         ),
         goals=problem.goals,
         predictions=predictions(problem, levels, x),

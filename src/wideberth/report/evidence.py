@@ -9,7 +9,7 @@ from wideberth.report.blocks import Block, Bullets, Drawing, Heading, PageBreak,
 from wideberth.report.figures import draw_line, draw_map, draw_margins, draw_residuals
 from wideberth.report.numbers import format_value, with_unit
 from wideberth.report.style import to_svg
-from wideberth.report.wording import guard_sentence, promise
+from wideberth.report.wording import guard_sentence, promise, proof_sentence
 from wideberth.surface.records import Shape
 
 _METHODS = """
@@ -19,6 +19,7 @@ Geometry: canonical form after Box and Wilson (1951); ridge path after Hoerl (19
 Goals: desirabilities of Derringer and Suich, Journal of Quality Technology 12 (1980), 214-219.
 Guards: confidence, prediction and one-sided tolerance bounds (noncentral t, Owen 1968), made \
 simultaneous over the region by simulating the largest pivotal ratio.
+Proof of the optimum: branch and bound with Lagrangian tangents (Horst and Tuy 1996).
 Draws: exact posterior draws of a multivariate regression (Geisser 1965), each optimised anew.
 Region of the optimum: an ellipsoid around the draws' optima, sized by their own quantile.
 Conformance: posterior predictive probability of meeting all limits (Peterson 2004).
@@ -154,7 +155,10 @@ def _goals(record: Record) -> list[Block]:
         lead = "On these goals the setting shown reaches"
     return [
         Heading(3, "Goals"),
-        Paragraph(f"{lead} an overall desirability of {total}, between 0 (useless) and 1 (ideal)."),
+        Paragraph(
+            f"{lead} an overall desirability of {total}, between 0 (useless) and 1 (ideal)."
+            f" {proof_sentence(choice)}".rstrip()
+        ),
         Table("Goals as stated and reached", header, tuple(rows)),
         *([Bullets("Bounds that the setting leans on", choice.edge)] if choice.edge else []),
     ]

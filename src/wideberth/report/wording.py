@@ -41,6 +41,20 @@ def status_sentence(choice: Choice) -> str:
     return _ASKED_SENTENCE.get(choice.status, found) if choice.asked else found
 
 
+def proof_sentence(choice: Choice) -> str:
+    """Say what no allowed setting can exceed; empty where nothing was proven."""
+    if choice.desirability is None or choice.proof_gap is None:
+        return ""
+    bound = min(choice.desirability + choice.proof_gap, 1.0)
+    # rounded outwards, so that the printed bound still bounds
+    shown = math.ceil(bound * 1e4 - 1e-6) / 1e4
+    step = "settable " if choice.unrounded.desirability != choice.desirability else "allowed "
+    return (
+        f"On the fitted equations no {step}setting that holds every limit can score above"
+        f" {shown:.4f} of overall desirability; this one scores {choice.desirability:.4f}."
+    )
+
+
 CAUTIONS = (
     "An empirical model is valid only where runs were made; it is no hazard review.",
     (
