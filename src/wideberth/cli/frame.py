@@ -107,8 +107,8 @@ def _print_faults(error: InputError, *, as_json: bool) -> None:
         click.echo(f"- {fault.where}: {fault.what}\n  {fault.mend}", err=True)
 
 
-def read_at(study: Study, text: str | None) -> dict[str, float | str] | None:
-    """Read the setting given with ``--at``, ``None`` when none was."""
+def read_at(study: Study, text: str | None, option: str = "--at") -> dict[str, float | str] | None:
+    """Read a setting given with an option, ``None`` when none was."""
     if text is None:
         return None
     numeric = {factor.name for factor in study.numeric}
@@ -116,15 +116,15 @@ def read_at(study: Study, text: str | None) -> dict[str, float | str] | None:
     for part in text.split(","):
         name, equals, value = (piece.strip() for piece in part.partition("="))
         if not equals or not value:
-            raise refusal(f"'{part}' is no NAME=VALUE", "--at", "write catalyst=1.2,pressure=8")
+            raise refusal(f"'{part}' is no NAME=VALUE", option, "write catalyst=1.2,pressure=8")
         if name in setting:
-            raise refusal(f"{name} is given twice", "--at", "give every factor once")
+            raise refusal(f"{name} is given twice", option, "give every factor once")
         setting[name] = value
         if name in numeric:
             try:
                 setting[name] = float(value)
             except ValueError as error:
-                raise refusal(f"{name} is '{value}'", "--at", "give a number") from error
+                raise refusal(f"{name} is '{value}'", option, "give a number") from error
     return setting
 
 

@@ -26,6 +26,7 @@ if TYPE_CHECKING:
 @click.command("recommend")
 @study_argument
 @at_option
+@click.option("--fix", help="Fix some factors and settle the rest: NAME=VALUE,...")
 @click.option(
     "--room",
     type=click.Choice(["stated", "none"]),
@@ -38,7 +39,14 @@ if TYPE_CHECKING:
 @quiet_option
 @guarded
 def command(
-    study_dir: str, *, at: str | None, room: str, seed: int | None, as_json: bool, quiet: bool
+    study_dir: str,
+    *,
+    at: str | None,
+    fix: str | None,
+    room: str,
+    seed: int | None,
+    as_json: bool,
+    quiet: bool,
 ) -> int:
     """Name the setpoint: the best compromise of the goals inside all limits.
 
@@ -53,7 +61,14 @@ def command(
     study = read_study(study_dir)
     progress = ProgressLine(quiet=quiet or as_json)
     setting = read_at(study, at)
-    choice = recommend(fit(study), seed=seed, at=setting, room=room == "stated", progress=progress)
+    choice = recommend(
+        fit(study),
+        seed=seed,
+        at=setting,
+        fix=read_at(study, fix, "--fix"),
+        room=room == "stated",
+        progress=progress,
+    )
     progress.close()
     if as_json:
         click.echo(dumps(recommend_json(choice, study)), nl=False)

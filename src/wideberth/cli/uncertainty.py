@@ -64,10 +64,12 @@ def print_uncertainty(sure: Uncertainty, choice: Choice, study: Study) -> None:
     from wideberth.report.numbers import decimals_of, named
     from wideberth.report.wording import (
         CAUTIONS,
+        difference_words,
         location_sentence,
         loss_sentence,
         setting_words,
         status_sentence,
+        today_sentences,
         together_sentences,
     )
 
@@ -95,5 +97,14 @@ def print_uncertainty(sure: Uncertainty, choice: Choice, study: Study) -> None:
     click.echo("\nWhat the setting is worth")
     for sentence in (*together_sentences(sure), *loss_sentence(sure, choice)):
         click.echo(f"  {sentence}")
+    if sure.today is not None:
+        click.echo(f"\nAgainst today ({setting_words(study, sure.today.setting)})")
+        rows = [
+            (named(name, sure.today.predictions[name].unit), difference_words(one))
+            for name, one in sure.today.differences.items()
+        ]
+        print_table(("response", "change, 95 %"), rows)
+        for sentence in today_sentences(sure):
+            click.echo(f"  {sentence}")
     click.echo(f"\n{sure.draws} draws, seed {sure.seed}.")
     click.echo("Cautions: " + " ".join(CAUTIONS))

@@ -77,23 +77,43 @@ def conformance(
     """
     if not problem.sides:
         return None
+    shares, block = _at_worst_block(problem, draws, levels, x, error_sd, seed)
+    name = None if block is None else problem.study.runs.blocks[block]
+    return Conformance(float(shares.mean()), float(np.quantile(shares, LOWER)), name)
+
+
+def held_shares(
+    problem: Problem,
+    draws: Draws,
+    levels: tuple[int, ...],
+    x: FloatArray,
+    error_sd: FloatArray,
+    seed: int,
+) -> FloatArray:
+    """Give each draw's share of batches inside all limits at the worst block: shape (n,)."""
+    return _at_worst_block(problem, draws, levels, x, error_sd, seed)[0]
+
+
+def _at_worst_block(
+    problem: Problem,
+    draws: Draws,
+    levels: tuple[int, ...],
+    x: FloatArray,
+    error_sd: FloatArray,
+    seed: int,
+) -> tuple[FloatArray, int | None]:
     random = stream(seed, "batches", 0)
     off = random.standard_normal((N_BATCHES, len(x))) * error_sd
     noise = random.standard_normal((N_BATCHES, len(draws.varying)))
     terms = features(x + off)
-    worst: Conformance | None = None
+    found: list[tuple[FloatArray, int | None]] = []
     for block in limit_blocks(problem):
-        shares = np.concatenate(
-            [
-                _held(problem, draws.part(i, i + _AT_ONCE), levels, block, terms, noise)
-                for i in range(0, draws.n_draws, _AT_ONCE)
-            ]
-        )
-        name = None if block is None else problem.study.runs.blocks[block]
-        one = Conformance(float(shares.mean()), float(np.quantile(shares, LOWER)), name)
-        if worst is None or one.mean < worst.mean:
-            worst = one
-    return worst
+        parts = [
+            _held(problem, draws.part(i, i + _AT_ONCE), levels, block, terms, noise)
+            for i in range(0, draws.n_draws, _AT_ONCE)
+        ]
+        found.append((np.concatenate(parts), block))
+    return min(found, key=lambda one: float(one[0].mean()))
 
 
 def limit_blocks(problem: Problem) -> tuple[int | None, ...]:

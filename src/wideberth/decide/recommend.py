@@ -25,6 +25,7 @@ from wideberth.decide.judge import (
     predictions,
     read_setting,
 )
+from wideberth.decide.pins import with_pins
 from wideberth.decide.problem import Mode, Problem, arena, build_problem
 from wideberth.decide.proving import Gains, possible_gains
 from wideberth.decide.records import Bare, Choice, Conflict, LimitVerdict, Status
@@ -57,6 +58,7 @@ def recommend(
     *,
     seed: int | None = None,
     at: Setting | None = None,
+    fix: Setting | None = None,
     room: bool = True,
     progress: Progress = silent,
 ) -> Choice:
@@ -70,6 +72,8 @@ def recommend(
         Of the simulated guard; the study's own by default.
     at : Setting, optional
         A setting of the person's own, own units, to be judged instead of searching.
+    fix : Setting, optional
+        Some factors fixed at these values, own units; the rest is settled around them.
     room : bool
         False asks for the bare optimum, without the room of the tolerances.
     progress : Progress
@@ -86,7 +90,7 @@ def recommend(
         When the study states neither a goal nor a limit, when nothing is left to search, or when
         the given setting cannot be read.
     """
-    return solve(models, seed=seed, at=at, room=room, progress=progress)[1]
+    return solve(models, seed=seed, at=at, fix=fix, room=room, progress=progress)[1]
 
 
 def solve(
@@ -94,6 +98,7 @@ def solve(
     *,
     seed: int | None = None,
     at: Setting | None = None,
+    fix: Setting | None = None,
     room: bool = True,
     progress: Progress = silent,
 ) -> tuple[Problem, Choice]:
@@ -105,9 +110,15 @@ def solve(
             "study.toml",
             "state what at least one response is wanted to be, or what it must not exceed",
         )
+    if at is not None and fix:
+        raise refusal(
+            "a setting cannot be judged and sought at once", "--at and --fix", "give one of them"
+        )
     chosen_seed = study.seed if seed is None else seed
     progress("guards", 0.0)
     problem = build_problem(models, seed=chosen_seed, room=room)
+    if fix:
+        problem = with_pins(problem, fix)
     progress("search", 0.4)
     choice = _judge_given(problem, at) if at is not None else _choose(problem)
     progress("search", 1.0)

@@ -21,6 +21,7 @@ from wideberth.study.records import BoolArray, FloatArray, Study
 from wideberth.surface.explored import Explored
 
 _OUTSIDE = 1e-9
+_WHERE = "study.toml"
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -133,7 +134,7 @@ def search_region(study: Study, explored: Explored) -> Region:
         basis=explored.basis,
         middle=explored.origin,
     )
-    return _centred(region, "the allowed ranges and constraints leave no setting to search", study)
+    return centred(region, "the allowed ranges and constraints leave no setting to search", _WHERE)
 
 
 def with_room(region: Region, room: Room, study: Study) -> Region:
@@ -142,7 +143,7 @@ def with_room(region: Region, room: Room, study: Study) -> Region:
         return region
     reach = np.maximum(region.planes * room.above, -region.planes * room.below).sum(axis=1)
     tight = replace(region, bounds=region.bounds - reach)
-    return _centred(tight, "the room of the stated tolerances fits nowhere in the region", study)
+    return centred(tight, "the room of the stated tolerances fits nowhere in the region", _WHERE)
 
 
 def inside_planes(region: Region, x: FloatArray) -> BoolArray:
@@ -212,7 +213,7 @@ def _sign_rays(r: int) -> FloatArray:
     return np.concatenate([np.eye(r), -np.eye(r), corners])
 
 
-def _centred(region: Region, nothing_left: str, study: Study) -> Region:
+def centred(region: Region, nothing_left: str, where: str) -> Region:
     """Find the setting with the largest smallest slack, or refuse when there is none."""
     k = len(region.origin)
     rows = [region.ellipsoid_row()] if region.has_ellipsoid else []
@@ -222,7 +223,7 @@ def _centred(region: Region, nothing_left: str, study: Study) -> Region:
     coefficients = np.concatenate([np.array(rows).reshape(len(rows), flat.shape[1]), flat])
     still = (region.planes @ region.origin - region.bounds)[~moves].max(initial=-np.inf)
     if still > _OUTSIDE:
-        raise refusal(nothing_left, "study.toml", "widen allowed, the constraints or the region")
+        raise refusal(nothing_left, where, "widen allowed, the constraints or the region")
     if not len(coefficients):
         return region
     program = Program(
@@ -238,5 +239,5 @@ def _centred(region: Region, nothing_left: str, study: Study) -> Region:
     best = refine(program, region.origin[None, :], np.array([[-1.0]]), region.basis)
     deepest = expand(program, best.x.T).values.min()
     if deepest < -_OUTSIDE:
-        raise refusal(nothing_left, "study.toml", "widen allowed, the constraints or the region")
+        raise refusal(nothing_left, where, "widen allowed, the constraints or the region")
     return replace(region, middle=best.x[0])

@@ -10,10 +10,13 @@ from wideberth.report.shares_figure import draw_shares
 from wideberth.report.style import to_svg
 from wideberth.report.wording import (
     SINGLY_WARNING,
+    difference_words,
     ends_words,
     location_sentence,
     loss_sentence,
+    setting_words,
     shares_words,
+    today_sentences,
     together_sentences,
     window_sentence,
 )
@@ -53,7 +56,31 @@ def _doubt(record: Record) -> list[Block]:
         caption = f"Where the optimum may lie, {100 * sure.region.level:g} % region"
         header = ("Factor", "Setting", "Smallest to largest in the region")
         blocks.append(Table(caption, header, rows))
-    return [*blocks, *_corrected(record)]
+    return [*blocks, *_corrected(record), *_against_today(record)]
+
+
+def _against_today(record: Record) -> list[Block]:
+    today = record.uncertainty.today
+    if today is None:
+        return []
+    rows = []
+    for name, change in today.differences.items():
+        before, now = today.predictions[name], record.choice.predictions[name]
+        half = (change.interval[1] - change.interval[0]) / 2 if change.interval else None
+        rows.append(
+            (
+                named(name, before.unit),
+                format_value(before.mean, half or None),
+                format_value(now.mean, half or None),
+                difference_words(change),
+            )
+        )
+    header = ("Response", "Today", "This setting", "Change, 95 %")
+    words = f"Today's setting: {setting_words(record.study, today.setting)}."
+    return [
+        Table("Against today's setting", header, tuple(rows)),
+        Paragraph(" ".join([words, *today_sentences(record.uncertainty)])),
+    ]
 
 
 def _corrected(record: Record) -> list[Block]:

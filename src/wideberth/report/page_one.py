@@ -16,12 +16,14 @@ from wideberth.report.numbers import (
 from wideberth.report.wording import (
     CAUTIONS,
     conformance_words,
+    difference_words,
     ends_words,
     guard_sentence,
     limit_words,
     location_sentence,
     margin_words,
     status_sentence,
+    today_sentences,
     unknowns,
 )
 from wideberth.study.records import Finding, Study
@@ -62,6 +64,14 @@ def page_one(record: Record) -> tuple[Block, ...]:
     blocks += [_settings(record), _responses(record)]
     if choice.ruling:
         blocks.append(Paragraph(f"The limit that rules: {choice.ruling}."))
+    today = record.uncertainty.today
+    if today is not None:
+        changes = "; ".join(
+            with_unit(f"{name} {difference_words(one)}", today.predictions[name].unit)
+            for name, one in today.differences.items()
+        )
+        verdict_words = " ".join(today_sentences(record.uncertainty)[:2])
+        blocks.append(Paragraph(f"Against today: {changes}. {verdict_words}"))
     blocks += [
         Bullets("What is not known", (_location(record), *unknowns(study))),
         Paragraph(_confirmation(choice)),

@@ -10,7 +10,7 @@ from wideberth.decide.records import Choice, LimitVerdict, Status
 from wideberth.operate.records import Window
 from wideberth.report.numbers import decimals_of, format_setting, format_value, with_unit
 from wideberth.study.records import GuardKind, NumericFactor, Setting, Study
-from wideberth.uncertainty.records import Uncertainty
+from wideberth.uncertainty.records import Difference, Uncertainty
 
 STATUS_SENTENCE: dict[Status, str] = {
     "met": "Every limit holds with its guard at this setpoint, over its whole room.",
@@ -202,6 +202,40 @@ def loss_sentence(sure: Uncertainty, choice: Choice) -> tuple[str, ...]:
             f" {sure.optimism.corrected:.3f}."
         )
     return tuple(said)
+
+
+def today_sentences(sure: Uncertainty) -> tuple[str, ...]:
+    """Say what changes against today's setting, and whether it is shown to be better."""
+    today = sure.today
+    if today is None:
+        return ()
+    said = [today.verdict]
+    if today.broken:
+        said.append(f"Today's setting does not hold {', '.join(today.broken)}.")
+    one = today.desirability
+    if one is not None and one.interval is not None:
+        low, high = one.interval
+        said.append(
+            f"Overall desirability changes by {one.mean:+.3f} (95 %: {low:+.3f} to {high:+.3f}),"
+            " corrected for what the search flatters."
+        )
+    return tuple(said)
+
+
+def difference_words(one: Difference) -> str:
+    """Word a paired difference with its interval: ``+4.34 (+4.00 to +4.69)``."""
+    if one.interval is None:
+        return f"{format_value(one.mean)} (no interval: no degrees of freedom)"
+    low, high = one.interval
+    half = (high - low) / 2
+    ends = [signed(end, half or None) for end in (one.mean, low, high)]
+    return f"{ends[0]} ({ends[1]} to {ends[2]})" if half > 0 else f"{ends[0]} (exact)"
+
+
+def signed(value: float, uncertainty: float | None) -> str:
+    """Write a number with its sign."""
+    text = format_value(value, uncertainty)
+    return text if text.startswith("-") else f"+{text}"
 
 
 def setting_words(study: Study, setting: Setting) -> str:

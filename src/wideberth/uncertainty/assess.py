@@ -28,6 +28,7 @@ from wideberth.surface.explored import factor_ranges
 from wideberth.uncertainty.cloud import Cloud, cloud_of, desirability_at, on_edge
 from wideberth.uncertainty.location import FEWEST, optimum_region
 from wideberth.uncertainty.records import Optimism, OptimumRegion, PossibleLoss, Uncertainty
+from wideberth.uncertainty.today import against_today
 
 N_DRAWS = 2000
 LEVEL = 0.95
@@ -93,6 +94,7 @@ def assess(
         conformance_exact_setting=None,
         setting_error_included=bool(setting_sd(problem.study).any()),
         optimism=None,
+        today=against_today(problem, choice, None, None),
         findings=(),
         reason=why_no_draws(problem.models),
     )
@@ -105,6 +107,7 @@ def assess(
     held = conformance(problem, draws, levels, x, setting_sd(problem.study), choice.seed)
     exact = conformance(problem, draws, levels, x, np.zeros(len(x)), choice.seed)
     some = cloud.feasible
+    optimism = _optimism(problem, choice, draws, cloud)
     # a setting that breaks its limits is not compared with settings that hold them
     stands = choice.asked or choice.status in ("met", "provisional", "unreached", "unsupported")
     result = replace(
@@ -117,7 +120,8 @@ def assess(
         possible_loss=_possible_loss(problem, choice, draws, cloud) if stands else None,
         conformance=held,
         conformance_exact_setting=exact,
-        optimism=_optimism(problem, choice, draws, cloud) if stands else None,
+        optimism=optimism if stands else None,
+        today=against_today(problem, choice, draws, optimism),
     )
     return replace(result, findings=_findings(problem, result))
 

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 
 from wideberth.decide.conformance import Conformance
 from wideberth.decide.problem import Mode
+from wideberth.decide.records import Prediction
 from wideberth.study.records import Finding, FloatArray, Setting
 
 
@@ -58,6 +59,43 @@ class Optimism:
     responses: Mapping[str, tuple[float, float]]
 
 
+@dataclass(frozen=True, slots=True)
+class Difference:
+    """The setpoint less today's setting, with a 95 % interval where one can be given."""
+
+    mean: float
+    interval: tuple[float, float] | None
+
+
+@dataclass(frozen=True, slots=True)
+class Today:
+    """The setpoint held against today's setting.
+
+    Attributes
+    ----------
+    setting : Setting
+    predictions : mapping
+        Of every response at today's setting.
+    differences : mapping
+        Of every response's mean, in its unit: exact paired intervals.
+    desirability : Difference or None
+        Corrected by the optimism of the draws; ``None`` without goals or draws.
+    conformance : Difference or None
+        Share of batches inside all limits; ``None`` without limits or draws.
+    broken : tuple of str
+        Limits that today's setting does not hold, as one fixed in advance.
+    verdict : str
+    """
+
+    setting: Setting
+    predictions: Mapping[str, Prediction]
+    differences: Mapping[str, Difference]
+    desirability: Difference | None
+    conformance: Difference | None
+    broken: tuple[str, ...]
+    verdict: str
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class Uncertainty:
     """How sure a choice is.
@@ -77,6 +115,8 @@ class Uncertainty:
     level_shares : mapping
         For each combination of levels of categorical factors, the share of draws that prefer it.
     region, possible_loss, optimism : records or None
+    today : Today or None
+        The setpoint held against ``[today]``, where that is stated for every factor.
     conformance : Conformance or None
         Setting error included where tolerances are stated; ``None`` without limits.
     conformance_exact_setting : Conformance or None
@@ -96,5 +136,6 @@ class Uncertainty:
     conformance_exact_setting: Conformance | None
     setting_error_included: bool
     optimism: Optimism | None
+    today: Today | None
     findings: tuple[Finding, ...]
     reason: str
