@@ -25,6 +25,7 @@ from wideberth.decide.questions import (
     largest_margin,
     largest_uncapped,
     largest_value,
+    least_relaxation,
     least_violation,
 )
 from wideberth.quadratic.terms import features
@@ -32,6 +33,8 @@ from wideberth.study.records import FloatArray
 
 _GRADED_BELOW = 0.05
 _FIRST_TARGET = 1e-2
+_MET = -1e-9
+_STEEP = 20.0
 
 Scorer = Callable[[Arena, FloatArray, FloatArray], FloatArray]
 """Takes the arena, settings (N, k) and their hard values (n_hard, N)."""
@@ -132,6 +135,30 @@ def peak(curve: FloatArray) -> Aim:
         return result
 
     return Aim(largest_value(curve), value, value, _just_below(value), holds_limits=False)
+
+
+def relaxation(limit: int) -> Aim:
+    """Aim at the largest margin of one limit side among settings that hold all the others."""
+
+    def apart(arena: Arena, values: FloatArray) -> tuple[FloatArray, FloatArray]:
+        margins = limit_margins(arena, values)
+        place = arena.limits.index(limit)
+        others = np.delete(margins, place, axis=0).min(axis=0, initial=np.inf)
+        return margins[place], others
+
+    def score(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+        margin, others = apart(arena, values)
+        return np.where(others >= _MET, margin, -np.inf)
+
+    def graded(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+        margin, others = apart(arena, values)
+        result: FloatArray = margin + _STEEP * np.minimum(others, 0.0)
+        return result
+
+    def targets(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+        return apart(arena, values)[0][:, None] - _FIRST_TARGET
+
+    return Aim(least_relaxation(limit), score, graded, targets, holds_limits=False)
 
 
 def tie_break(goal_floor: FloatArray, least_log_d: FloatArray | float, *, by_margin: bool) -> Aim:

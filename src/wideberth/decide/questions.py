@@ -67,6 +67,16 @@ def largest_margin(arena: Arena, cuts: Cuts, goal_floor: FloatArray | None = Non
     return _program(arena, rows, np.ones(1))
 
 
+def least_relaxation(limit: int) -> Question:
+    """Maximise the margin of one limit side while all the others hold."""
+
+    def question(arena: Arena, cuts: Cuts) -> Program:
+        rows = _hard_rows(arena, cuts, lambda row: 0 if row.limit == limit else _NO_TARGET)
+        return _program(arena, rows, np.ones(1))
+
+    return question
+
+
 def largest_uncapped(arena: Arena, cuts: Cuts, goal_floor: FloatArray | None = None) -> Program:
     """Maximise the smallest uncapped desirability inside all limits, perhaps above a floor."""
     rows = [_Row(curve, 0) for i in range(len(arena.goals)) for curve, _ in _goal_sides(arena, i)]

@@ -13,7 +13,7 @@ import numpy as np
 
 from wideberth.decide.aims import BEST, LEAST_POOR, NEAREST, SAFEST, Aim
 from wideberth.decide.confirmation import confirmation_ranges, confirmation_runs
-from wideberth.decide.conflicts import can_hold, conflict_of_steps, side_text, smallest_conflict
+from wideberth.decide.conflicts import can_hold, conflict_of_steps, side_text, smallest_conflicts
 from wideberth.decide.edges import edge_sentences
 from wideberth.decide.findings import choice_findings, rests_on_unusable
 from wideberth.decide.judge import (
@@ -138,7 +138,7 @@ def _choose(problem: Problem) -> Choice:
     if status == "conflict":
         every = tuple(range(len(problem.sides)))
         between = can_hold(problem, mode, every)
-        conflicts = (conflict_of_steps(problem) if between else smallest_conflict(problem, mode),)
+        conflicts = (conflict_of_steps(problem),) if between else smallest_conflicts(problem, mode)
     if not problem.possible and status == "unproven":
         shown = _best_answer(problem, "means")
         if shown is not None:

@@ -94,10 +94,14 @@ class ConstraintVerdict:
 
 @dataclass(frozen=True, slots=True)
 class Conflict:
-    """A smallest set of limits that cannot hold together, each as (response, side, value)."""
+    """A smallest set of limits that cannot hold together, each as (response, side, value).
+
+    ``relaxed`` gives for each member the value to which it alone would have to be relaxed.
+    """
 
     limits: tuple[tuple[str, Side, float], ...]
     text: str
+    relaxed: tuple[float, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)

@@ -104,6 +104,11 @@ def find_safest(arena: Arena) -> Found:
     return _expect(_search(arena, SAFEST, no_cuts(arena), []))
 
 
+def find_for(arena: Arena, aim: Aim) -> Found:
+    """Find the best setting for any aim that some setting of the region can serve."""
+    return _expect(_search(arena, aim, no_cuts(arena), [find_safest(arena).x]))
+
+
 def find_nearest(arena: Arena) -> Found:
     """Find the setting that breaks the limits least, by the sum of violations."""
     return _expect(_search(arena, NEAREST, no_cuts(arena), [find_safest(arena).x]))
