@@ -12,6 +12,7 @@ import numpy as np
 
 from wideberth import __version__
 from wideberth.chain.record import Record
+from wideberth.decide.give_ups import GiveUp
 from wideberth.decide.records import Choice
 from wideberth.errors import Fault
 from wideberth.fit.records import Model, Models
@@ -81,6 +82,14 @@ def recommend_json(choice: Choice, study: Study) -> Json:
     return {**head, **{key: value for key, value in content.items() if key != "seed"}}
 
 
+def give_ups_json(costs: tuple[GiveUp, ...]) -> list[Any]:
+    """Give what each limit and goal bound costs."""
+    return [
+        {key: value for key, value in _plain(one).items() if key not in ("scales", "units")}
+        for one in costs
+    ]
+
+
 def uncertainty_json(sure: Uncertainty, study: Study) -> Json:
     """Give the answer of ``uncertainty``."""
     return {**_head("uncertainty", study), **_plain(sure)}
@@ -117,6 +126,7 @@ def record_json(record: Record) -> Json:
         "window": window_json(record.window, study),
         "robustness": robustness_json(record.robustness, study),
         "outward": _plain(record.outward),
+        "give_ups": give_ups_json(record.give_ups),
         "maps": _plain(record.maps),
     }
 

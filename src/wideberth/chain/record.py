@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from importlib.metadata import version as package_version
 
 from wideberth import __version__
+from wideberth.decide.give_ups import GiveUp, give_ups
 from wideberth.decide.maps import factor_maps
 from wideberth.decide.recommend import solve
 from wideberth.decide.records import Choice, FactorMap
@@ -42,6 +43,8 @@ class Record:
         What `check_study` found.
     maps : tuple of FactorMap
         Two factors at a time through the setpoint.
+    give_ups : tuple of GiveUp
+        What each limit and goal bound costs.
     outward : Outward
         The ridge of the compromise, and runs to try beyond the explored edge.
     """
@@ -59,6 +62,7 @@ class Record:
     window: Window
     robustness: Robustness
     outward: Outward
+    give_ups: tuple[GiveUp, ...]
 
 
 def build_record(
@@ -84,6 +88,8 @@ def build_record(
     progress("recommend", 0.2)
     problem, choice = solve(models, seed=seed)
     draws = draws_for(problem, choice, n_draws)
+    progress("give-ups", 0.25)
+    costs = give_ups(problem, choice)
     progress("uncertainty", 0.3)
     sure = assess(problem, choice, draws)
     progress("window", 0.6)
@@ -108,4 +114,5 @@ def build_record(
         window=box,
         robustness=wandering,
         outward=ridge,
+        give_ups=costs,
     )

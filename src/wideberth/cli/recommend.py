@@ -34,6 +34,7 @@ if TYPE_CHECKING:
     show_default=True,
     help="none: the bare optimum, without the room of the tolerances.",
 )
+@click.option("--give-ups", "costs", is_flag=True, help="Say what each limit and goal costs.")
 @seed_option
 @json_option
 @quiet_option
@@ -44,6 +45,7 @@ def command(
     at: str | None,
     fix: str | None,
     room: str,
+    costs: bool,
     seed: int | None,
     as_json: bool,
     quiet: bool,
@@ -52,16 +54,18 @@ def command(
 
     Example: wideberth recommend my-study --at catalyst=1.2,pressure=8,substrate=140
     """
-    from wideberth.chain.as_json import dumps, recommend_json
+    from wideberth.chain.as_json import dumps, give_ups_json, recommend_json
     from wideberth.cli.progress import ProgressLine
-    from wideberth.decide.recommend import recommend
+    from wideberth.decide.give_ups import give_ups
+    from wideberth.decide.recommend import solve
     from wideberth.fit.models import fit
+    from wideberth.report.give_up_words import give_up_sentence
     from wideberth.study.reading import read_study
 
     study = read_study(study_dir)
     progress = ProgressLine(quiet=quiet or as_json)
     setting = read_at(study, at)
-    choice = recommend(
+    problem, choice = solve(
         fit(study),
         seed=seed,
         at=setting,
@@ -69,11 +73,19 @@ def command(
         room=room == "stated",
         progress=progress,
     )
+    found = give_ups(problem, choice, progress=progress) if costs else ()
     progress.close()
     if as_json:
-        click.echo(dumps(recommend_json(choice, study)), nl=False)
+        content = recommend_json(choice, study)
+        click.echo(
+            dumps({**content, "give_ups": give_ups_json(found)} if costs else content), nl=False
+        )
     else:
         print_choice(choice, study)
+        if costs:
+            click.echo("\nWhat each limit and goal costs")
+        for one in found:
+            click.echo(f"  {give_up_sentence(one)}")
     return 0 if choice.status == "met" else 3
 
 

@@ -86,7 +86,7 @@ def bound_desirability(
         value = float(np.exp(_log_d(relaxed, np.zeros((1, 0)))[0]))
         return Certificate(value, 1, closed=value <= best + gap)
     middles, halves = _first_box(arena, relaxed)
-    found = [_mixture_at(relaxed, z) for z in (optima - region.origin) @ region.basis]
+    found = [mixture_at(relaxed, z) for z in (optima - region.origin) @ region.basis]
     mixtures = [mixture for mixture in found if mixture is not None]
     steps = _steps_in_z(arena, axes)
     level = np.log(best + gap)
@@ -157,7 +157,7 @@ def _sum_of_goals(relaxed: Relaxed, u: FloatArray) -> FloatArray:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class _Mixture:
+class Mixture:
     """Multipliers of an optimum z (r,): of the goals' sides (S,), rows (R,) and planes (L,).
 
     The sides' are multiplied by their powers already; a goal's cap takes what they lack.
@@ -169,7 +169,7 @@ class _Mixture:
     planes: FloatArray
 
 
-def _mixture_at(relaxed: Relaxed, z: FloatArray) -> _Mixture | None:
+def mixture_at(relaxed: Relaxed, z: FloatArray) -> Mixture | None:
     """Find multipliers that make a mixture of tangents flat at z; ``None`` where D is 0."""
     r, place = len(z), z[None, :]
     u = (features(place) @ relaxed.side_curves.T)[0]
@@ -209,10 +209,10 @@ def _mixture_at(relaxed: Relaxed, z: FloatArray) -> _Mixture | None:
     of_rows, of_planes = np.zeros(len(relaxed.rows)), np.zeros(len(relaxed.bounds))
     of_rows[rows] = weights[len(goal) : len(goal) + len(rows)]
     of_planes[planes] = weights[len(goal) + len(rows) :]
-    return _Mixture(z, own * relaxed.side_power, of_rows, of_planes)
+    return Mixture(z, own * relaxed.side_power, of_rows, of_planes)
 
 
-def _above(relaxed: Relaxed, mixture: _Mixture, places: FloatArray) -> FloatArray:
+def _above(relaxed: Relaxed, mixture: Mixture, places: FloatArray) -> FloatArray:
     """Mix the tangents at places (n, r) into quadratics above log D where all rows hold: (n, p)."""
     r = places.shape[1]
     u = np.maximum(features(places) @ relaxed.side_curves.T, _SMALL)
@@ -228,7 +228,7 @@ def _above(relaxed: Relaxed, mixture: _Mixture, places: FloatArray) -> FloatArra
 
 def _bound(
     relaxed: Relaxed,
-    mixtures: list[_Mixture],
+    mixtures: list[Mixture],
     middles: FloatArray,
     halves: FloatArray,
     level: float,

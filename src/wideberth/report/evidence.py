@@ -7,6 +7,7 @@ from wideberth.fit.records import Model
 from wideberth.report.assurance import assurance
 from wideberth.report.blocks import Block, Bullets, Drawing, Heading, PageBreak, Paragraph, Table
 from wideberth.report.figures import draw_line, draw_map, draw_margins, draw_residuals
+from wideberth.report.give_up_words import bound_words, step_words
 from wideberth.report.numbers import format_value, with_unit
 from wideberth.report.style import to_svg
 from wideberth.report.wording import guard_sentence, promise, proof_sentence
@@ -161,6 +162,29 @@ def _goals(record: Record) -> list[Block]:
         ),
         Table("Goals as stated and reached", header, tuple(rows)),
         *([Bullets("Bounds that the setting leans on", choice.edge)] if choice.edge else []),
+        *_give_ups(record),
+    ]
+
+
+def _give_ups(record: Record) -> list[Block]:
+    rows = tuple(
+        (
+            bound_words(one),
+            with_unit(f"{one.step:g}", one.unit),
+            step_words(one, tighter=True),
+            step_words(one, tighter=False),
+        )
+        for one in record.give_ups
+    )
+    if not rows:
+        return []
+    return [
+        Heading(3, "What each limit and goal costs"),
+        Paragraph(
+            "Each bound is moved by one step, the settings are sought anew (before rounding to"
+            " steps), everything else is kept. D is the overall desirability."
+        ),
+        Table("Give-ups", ("Bound", "Step", "Tightened by a step", "Loosened by a step"), rows),
     ]
 
 
