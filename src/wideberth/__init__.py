@@ -16,6 +16,7 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from wideberth.chain.record import build_record
+    from wideberth.decide.frontier import frontier
     from wideberth.decide.recommend import recommend
     from wideberth.errors import InputError, NumericalError, RefusedError, WideberthError
     from wideberth.fit.models import fit
@@ -38,6 +39,7 @@ __all__ = [
     "build_record",
     "check_study",
     "fit",
+    "frontier",
     "memo_html",
     "read_study",
     "recommend",
@@ -57,6 +59,7 @@ _HOMES = {
     "build_record": "chain.record",
     "check_study": "study.checking",
     "fit": "fit.models",
+    "frontier": "decide.frontier",
     "memo_html": "report.memo",
     "read_study": "study.reading",
     "recommend": "decide.recommend",

@@ -37,6 +37,7 @@ COMMANDS = (
     "fit",
     "shape",
     "recommend",
+    "frontier",
     "uncertainty",
     "window",
     "robustness",

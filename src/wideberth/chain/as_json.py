@@ -12,6 +12,7 @@ import numpy as np
 
 from wideberth import __version__
 from wideberth.chain.record import Record
+from wideberth.decide.frontier import Frontier
 from wideberth.decide.give_ups import GiveUp
 from wideberth.decide.records import Choice
 from wideberth.errors import Fault
@@ -90,6 +91,11 @@ def give_ups_json(costs: tuple[GiveUp, ...]) -> list[Any]:
     ]
 
 
+def frontier_json(answer: Frontier, study: Study) -> Json:
+    """Give the answer of ``frontier``."""
+    return {**_head("frontier", study), **_plain(answer)}
+
+
 def uncertainty_json(sure: Uncertainty, study: Study) -> Json:
     """Give the answer of ``uncertainty``."""
     return {**_head("uncertainty", study), **_plain(sure)}
@@ -127,6 +133,7 @@ def record_json(record: Record) -> Json:
         "robustness": robustness_json(record.robustness, study),
         "outward": _plain(record.outward),
         "give_ups": give_ups_json(record.give_ups),
+        "frontier": None if record.frontier is None else _plain(record.frontier),
         "maps": _plain(record.maps),
     }
 

@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from importlib.metadata import version as package_version
 
 from wideberth import __version__
+from wideberth.decide.frontier import Frontier, trade_off
 from wideberth.decide.give_ups import GiveUp, give_ups
 from wideberth.decide.maps import factor_maps
 from wideberth.decide.recommend import solve
@@ -45,6 +46,8 @@ class Record:
         Two factors at a time through the setpoint.
     give_ups : tuple of GiveUp
         What each limit and goal bound costs.
+    frontier : Frontier or None
+        The trade-off between several goals, where the answer is ``met``.
     outward : Outward
         The ridge of the compromise, and runs to try beyond the explored edge.
     """
@@ -63,6 +66,7 @@ class Record:
     robustness: Robustness
     outward: Outward
     give_ups: tuple[GiveUp, ...]
+    frontier: Frontier | None
 
 
 def build_record(
@@ -90,7 +94,10 @@ def build_record(
     draws = draws_for(problem, choice, n_draws)
     progress("give-ups", 0.25)
     costs = give_ups(problem, choice)
-    progress("uncertainty", 0.3)
+    progress("frontier", 0.28)
+    several = len(problem.goals) > 1 and choice.status == "met"
+    traded = trade_off(problem, choice) if several else None
+    progress("uncertainty", 0.4)
     sure = assess(problem, choice, draws)
     progress("window", 0.6)
     box = window_around(problem, choice)
@@ -115,4 +122,5 @@ def build_record(
         robustness=wandering,
         outward=ridge,
         give_ups=costs,
+        frontier=traded,
     )

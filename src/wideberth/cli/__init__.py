@@ -13,6 +13,7 @@ _COMMANDS = (
     "fit",
     "shape",
     "recommend",
+    "frontier",
     "uncertainty",
     "window",
     "robustness",

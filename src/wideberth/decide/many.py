@@ -14,6 +14,7 @@ import numpy as np
 from wideberth.decide.aims import BEST, LEAST_POOR, SAFEST, Aim, tie_break
 from wideberth.decide.arena import (
     Arena,
+    Cuts,
     goal_targets,
     goal_values,
     hard_values,
@@ -68,11 +69,11 @@ def find_many(arena: Arena, warm: FloatArray) -> Optima:
     warm : ndarray, shape (w, k)
         Settings that every draw tries too, such as the optimum of the fitted models.
     """
-    pool = _Pool.of(arena)
+    pool = Pool.of(arena)
     aim = BEST if arena.goals else SAFEST
     n = _n_draws(arena)
     starts = np.concatenate([pool.starts(arena, aim), np.tile(warm, (n, 1, 1))], axis=1)
-    x, score = _refined(arena, aim, starts)
+    x, score = refined(arena, aim, starts)
     x, score = _with_library(arena, aim, pool, x, score)
     if not arena.goals:
         return Optima(x, score, score >= HOLDS)
@@ -87,7 +88,7 @@ def find_many(arena: Arena, warm: FloatArray) -> Optima:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
-class _Pool:
+class Pool:
     """Candidates (G, k) in cells around the region's middle: ``edges`` (n_cells + 1,)."""
 
     x: FloatArray
@@ -95,7 +96,8 @@ class _Pool:
     size: float
 
     @classmethod
-    def of(cls, arena: Arena) -> _Pool:
+    def of(cls, arena: Arena) -> Pool:
+        """Cover an arena's region."""
         k = arena.n_factors
         x = candidates(arena.region, 1024 if k <= 3 else 4096)
         side = (x - arena.region.middle) @ arena.region.basis[:, :_CELL_AXES] > 0
@@ -142,6 +144,10 @@ def _screen(arena: Arena, aim: Aim, pool: FloatArray) -> FloatArray:
         return graded
     y = np.stack([terms @ means.T for means in arena.goal_means], axis=-1)
     targets = goal_targets(arena, y.reshape(-1, y.shape[-1]))
+    if aim is LEAST_POOR:
+        required = np.minimum(values.min(axis=0, initial=0.0), 0.0)
+        smallest: FloatArray = targets.min(axis=1).reshape(len(pool), n) + _PENALTY * required
+        return smallest
     short = np.minimum(targets - _GRADED_BELOW, 0.0).sum(axis=1) / _GRADED_BELOW
     log_d = log_desirability(arena, np.maximum(targets, _GRADED_BELOW)) + short
     required = np.minimum(values.min(axis=0, initial=0.0), 0.0)
@@ -149,24 +155,29 @@ def _screen(arena: Arena, aim: Aim, pool: FloatArray) -> FloatArray:
     return whole
 
 
-def _refined(arena: Arena, aim: Aim, starts: FloatArray) -> tuple[FloatArray, FloatArray]:
-    """Refine all starts (n, S, k) and keep each draw's best: x (n, k), score (n,)."""
+def refined(
+    arena: Arena, aim: Aim, starts: FloatArray, cuts: Cuts | None = None
+) -> tuple[FloatArray, FloatArray]:
+    """Refine all starts (n, S, k) and keep each draw's best: x (n, k), score (n,).
+
+    ``cuts`` are places of the room at which every draw's rows must hold as well.
+    """
     n, each, k = starts.shape
     flat = starts.reshape(-1, k)
     own = arena.take(np.repeat(np.arange(n), each))
-    cuts = no_cuts(own)
+    cuts = no_cuts(own) if cuts is None else cuts
     targets = aim.targets(own, flat, hard_values(own, cuts, flat))
     ended = refine(aim.program(own, cuts), flat, targets, arena.region.basis).x
-    score = np.stack([score_of(own, aim, x).reshape(n, each) for x in (ended, flat)], axis=1)
+    score = np.stack([score_of(own, aim, x, cuts).reshape(n, each) for x in (ended, flat)], axis=1)
     score = score.reshape(n, -1)
     every = np.stack([ended.reshape(n, each, k), starts], axis=1).reshape(n, -1, k)
     best = score.argmax(axis=1)
     return every[np.arange(n), best], score[np.arange(n), best]
 
 
-def score_of(arena: Arena, aim: Aim, x: FloatArray) -> FloatArray:
+def score_of(arena: Arena, aim: Aim, x: FloatArray, cuts: Cuts | None = None) -> FloatArray:
     """Score settings (n, k), each by its own draw; minus infinity where the aim's rows break."""
-    values = hard_values(arena, no_cuts(arena), x)
+    values = hard_values(arena, no_cuts(arena) if cuts is None else cuts, x)
     rows = [aim.holds_limits or row.limit is None for row in arena.hard]
     kept = (values[rows].min(axis=0, initial=np.inf) >= HOLDS) & inside_planes(arena.region, x)
     with np.errstate(invalid="ignore"):
@@ -174,7 +185,7 @@ def score_of(arena: Arena, aim: Aim, x: FloatArray) -> FloatArray:
 
 
 def _with_library(
-    arena: Arena, aim: Aim, pool: _Pool, x: FloatArray, score: FloatArray
+    arena: Arena, aim: Aim, pool: Pool, x: FloatArray, score: FloatArray
 ) -> tuple[FloatArray, FloatArray]:
     """Try on every draw the optima of others that lie apart from its own."""
     found = x[np.isfinite(score)]
@@ -189,7 +200,7 @@ def _with_library(
     worth = np.flatnonzero((height > score - _WORTH_TRYING) & np.isfinite(height))
     if not len(worth):
         return x, score
-    tried, reached = _refined(arena.take(worth), aim, library[best[worth]][:, None, :])
+    tried, reached = refined(arena.take(worth), aim, library[best[worth]][:, None, :])
     better = reached > score[worth]
     x, score = x.copy(), score.copy()
     x[worth[better]], score[worth[better]] = tried[better], reached[better]
@@ -197,19 +208,19 @@ def _with_library(
 
 
 def _second_try(
-    arena: Arena, pool: _Pool, x: FloatArray
+    arena: Arena, pool: Pool, x: FloatArray
 ) -> tuple[FloatArray, FloatArray, BoolArray]:
     """Look again at draws where no start held the limits or reached every goal."""
     if arena.limits:
-        x, margin = _refined(arena, SAFEST, pool.starts(arena, SAFEST))
+        x, margin = refined(arena, SAFEST, pool.starts(arena, SAFEST))
         feasible = margin >= HOLDS
     else:
         feasible = np.ones(len(x), dtype=np.bool_)
     starts = np.concatenate([x[:, None, :], pool.starts(arena, BEST)], axis=1)
-    least_poor, height = _refined(arena, LEAST_POOR, starts)
+    least_poor, height = refined(arena, LEAST_POOR, starts)
     held = np.isfinite(height)
     x = np.where(held[:, None], least_poor, x)
-    again, score = _refined(arena, BEST, x[:, None, :])
+    again, score = refined(arena, BEST, x[:, None, :])
     x = np.where(np.isfinite(score)[:, None], again, x)
     return x, score, feasible | held
 
@@ -218,6 +229,6 @@ def _settled(arena: Arena, x: FloatArray, score: FloatArray) -> FloatArray:
     """Among settings that keep D take each draw's farthest from trouble: (n, k)."""
     floor = np.clip(goal_targets(arena, goal_values(arena, x)), 0.0, 1.0) - _TIE
     aim = tie_break(np.maximum(floor, 0.0).T, score - _SAME, by_margin=bool(arena.limits))
-    chosen, height = _refined(arena, aim, x[:, None, :])
+    chosen, height = refined(arena, aim, x[:, None, :])
     result: FloatArray = np.where(np.isfinite(height)[:, None], chosen, x)
     return result

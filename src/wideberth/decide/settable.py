@@ -19,7 +19,7 @@ from wideberth.decide.interior import refine
 from wideberth.decide.region import Region
 from wideberth.decide.search import Found, accept, rank
 from wideberth.study.coding import to_actual, to_coded
-from wideberth.study.records import FloatArray, NumericFactor
+from wideberth.study.records import FloatArray, NumericFactor, Setting, Study
 
 _EVERY = 60_000
 _MANY_REFINED = 256
@@ -52,6 +52,18 @@ def settable_grid(factors: tuple[NumericFactor, ...], region: Region) -> Grid:
         column for column in region.basis.T if not any(abs(column[j]) > 1e-9 for j in stepped)
     ]
     return Grid(tuple(axes), np.array(aligned).reshape(len(aligned), k).T)
+
+
+def nearest_settable(study: Study, setting: Setting) -> dict[str, float | str]:
+    """Round a setting, own units, to the nearest settable steps; other factors stay."""
+    nearest = dict(setting)
+    for factor in study.numeric:
+        if factor.settable_step is not None:
+            step = factor.settable_step
+            nearest[factor.name] = float(
+                round(Decimal(repr(float(setting[factor.name]))) / step) * step
+            )
+    return nearest
 
 
 def on_steps(arena: Arena, grid: Grid, aim: Aim, found: Found) -> Found | None:

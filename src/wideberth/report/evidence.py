@@ -7,12 +7,14 @@ from wideberth.fit.records import Model
 from wideberth.report.assurance import assurance
 from wideberth.report.blocks import Block, Bullets, Drawing, Heading, PageBreak, Paragraph, Table
 from wideberth.report.figures import draw_line, draw_map, draw_margins, draw_residuals
+from wideberth.report.frontier_figure import draw_frontier
 from wideberth.report.give_up_words import bound_words, step_words
-from wideberth.report.numbers import format_value, with_unit
+from wideberth.report.numbers import format_value, named, with_unit
 from wideberth.report.style import to_svg
-from wideberth.report.wording import guard_sentence, promise, proof_sentence
+from wideberth.report.wording import frontier_row, guard_sentence, promise, proof_sentence
 from wideberth.surface.records import Shape
 
+_FRONTIER_ROWS = 8
 _METHODS = """
 Coding and least squares: second-order models in coded units, by QR; PRESS after Allen (1974).
 Lack of fit: against runs repeated at the same settings in the same block.
@@ -163,6 +165,40 @@ def _goals(record: Record) -> list[Block]:
         Table("Goals as stated and reached", header, tuple(rows)),
         *([Bullets("Bounds that the setting leans on", choice.edge)] if choice.edge else []),
         *_give_ups(record),
+        *_frontier(record),
+    ]
+
+
+def _frontier(record: Record) -> list[Block]:
+    answer, study = record.frontier, record.study
+    if answer is None or len(answer.points) < 3:
+        return []
+    shown = list(answer.points[:: max(1, len(answer.points) // _FRONTIER_ROWS)])
+    units = {model.response: model.unit for model in record.models.models}
+    header = (
+        "",
+        *(named(f.name, f.unit) for f in study.factors),
+        *(named(goal.response, units[goal.response]) for goal in answer.goals),
+        "D",
+    )
+    rows = [("frontier", *frontier_row(answer, point, study)) for point in shown]
+    if answer.setpoint is not None:
+        rows.append(("setpoint", *frontier_row(answer, answer.setpoint, study)))
+    if answer.today is not None:
+        rows.append(("today", *frontier_row(answer, answer.today, study)))
+    names = ", ".join(goal.response for goal in answer.goals)
+    return [
+        Heading(3, "The trade-off"),
+        Paragraph(
+            "Settings at which no goal can be met better without another getting worse, all of"
+            " them inside every guarded limit with their room, before rounding to steps."
+        ),
+        Drawing(
+            to_svg(draw_frontier(answer), "frontier"),
+            f"Frontier settings, setpoint and today's setting for pairs of {names}.",
+            "The pairs of responses that trade most against each other.",
+        ),
+        Table("Settings along the frontier", header, tuple(rows)),
     ]
 
 
