@@ -177,8 +177,8 @@ def summary(rows: list[dict[str, object]]) -> str:
             " together, in the same run. Invented problems, seeds in proof.csv.\n"
         ),
         (
-            "| k | limit | room | cases | closed | boxes | search s | proof s | DE ratio | DE missed |"
-            " SLSQP x10 ratio | SLSQP missed |"
+            "| k | limit | room | cases | closed | boxes | search s | proof s | DE ratio"
+            " | DE missed | SLSQP x10 ratio | SLSQP missed |"
         ),
         "| --- | --- | --- | --- | --- | --- | --- | --- | --- | --- | --- | --- |",
     ]

@@ -133,6 +133,7 @@ def record_json(record: Record) -> Json:
         "robustness": robustness_json(record.robustness, study),
         "outward": _plain(record.outward),
         "give_ups": give_ups_json(record.give_ups),
+        "priorities": None if record.priorities is None else _plain(record.priorities),
         "frontier": None if record.frontier is None else _plain(record.frontier),
         "maps": _plain(record.maps),
     }

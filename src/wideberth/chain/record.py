@@ -10,6 +10,7 @@ from wideberth import __version__
 from wideberth.decide.frontier import Frontier, trade_off
 from wideberth.decide.give_ups import GiveUp, give_ups
 from wideberth.decide.maps import factor_maps
+from wideberth.decide.priorities import Priorities, priorities
 from wideberth.decide.recommend import solve
 from wideberth.decide.records import Choice, FactorMap
 from wideberth.fit.models import fit
@@ -48,6 +49,8 @@ class Record:
         What each limit and goal bound costs.
     frontier : Frontier or None
         The trade-off between several goals, where the answer is ``met``.
+    priorities : Priorities or None
+        How far each priority may move before the setpoint leaves its tolerance.
     outward : Outward
         The ridge of the compromise, and runs to try beyond the explored edge.
     """
@@ -67,6 +70,7 @@ class Record:
     outward: Outward
     give_ups: tuple[GiveUp, ...]
     frontier: Frontier | None
+    priorities: Priorities | None
 
 
 def build_record(
@@ -94,7 +98,9 @@ def build_record(
     draws = draws_for(problem, choice, n_draws)
     progress("give-ups", 0.25)
     costs = give_ups(problem, choice)
-    progress("frontier", 0.28)
+    progress("priorities", 0.27)
+    swayed = priorities(problem, choice)
+    progress("frontier", 0.3)
     several = len(problem.goals) > 1 and choice.status == "met"
     traded = trade_off(problem, choice) if several else None
     progress("uncertainty", 0.4)
@@ -123,4 +129,5 @@ def build_record(
         outward=ridge,
         give_ups=costs,
         frontier=traded,
+        priorities=swayed,
     )

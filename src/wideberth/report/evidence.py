@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from wideberth.chain.record import Record
+from wideberth.decide.priorities import FARTHEST
 from wideberth.fit.records import Model
 from wideberth.report.assurance import assurance
 from wideberth.report.blocks import Block, Bullets, Drawing, Heading, PageBreak, Paragraph, Table
@@ -11,7 +12,13 @@ from wideberth.report.frontier_figure import draw_frontier
 from wideberth.report.give_up_words import bound_words, step_words
 from wideberth.report.numbers import format_value, named, with_unit
 from wideberth.report.style import to_svg
-from wideberth.report.wording import frontier_row, guard_sentence, promise, proof_sentence
+from wideberth.report.wording import (
+    frontier_row,
+    guard_sentence,
+    promise,
+    proof_sentence,
+    setting_words,
+)
 from wideberth.surface.records import Shape
 
 _FRONTIER_ROWS = 8
@@ -164,8 +171,30 @@ def _goals(record: Record) -> list[Block]:
         ),
         Table("Goals as stated and reached", header, tuple(rows)),
         *([Bullets("Bounds that the setting leans on", choice.edge)] if choice.edge else []),
+        *_priorities(record),
         *_give_ups(record),
         *_frontier(record),
+    ]
+
+
+def _priorities(record: Record) -> list[Block]:
+    answer, study = record.priorities, record.study
+    if answer is None:
+        return []
+    rows = tuple(
+        (
+            sway.response,
+            f"{sway.priority:g}",
+            f"below {sway.priority / FARTHEST:.2g}" if sway.down is None else f"{sway.down:.2g}",
+            f"above {sway.priority * FARTHEST:.2g}" if sway.up is None else f"{sway.up:.2g}",
+            setting_words(study, sway.doubled),
+        )
+        for sway in answer.sways
+    )
+    header = ("Response", "Priority", "Leaves at less than", "Leaves at more than", "If doubled")
+    return [
+        Table("How far a priority may move before the setpoint leaves its tolerance", header, rows),
+        Paragraph(f"With all priorities equal: {setting_words(study, answer.equal)}."),
     ]
 
 
