@@ -28,6 +28,7 @@ from wideberth.decide.tangents import (
     row_above,
     row_value,
 )
+from wideberth.quadratic.box import halved
 from wideberth.quadratic.stack import Stack
 from wideberth.quadratic.terms import features
 from wideberth.study.records import BoolArray, FloatArray
@@ -113,7 +114,7 @@ def bound_desirability(
             # a single settable setting that the places of the cuts do not exclude
             value = float(np.exp(bounds[left][points].max()))
             return Certificate(max(highest, value), boxes, closed=False)
-        middles, halves = _halved(middles, halves)
+        middles, halves = halved(middles, halves)
         if steps:
             middles, halves = _on_values(middles, halves, steps)
     return Certificate(min(highest, 1.0), boxes, closed=True)
@@ -284,16 +285,6 @@ def _own_tangents(relaxed: Relaxed, z: FloatArray) -> FloatArray:
         total += weight[:, None] * relaxed.side_curves[lowest]
         total[:, 0] += weight * here * (np.log(np.minimum(here, 1.0)) - 1.0)
     return total
-
-
-def _halved(middles: FloatArray, halves: FloatArray) -> tuple[FloatArray, FloatArray]:
-    """Cut every box in two across its widest side."""
-    widest, every = halves.argmax(axis=1), np.arange(len(halves))
-    halves = halves.copy()
-    halves[every, widest] /= 2
-    moved = np.zeros_like(middles)
-    moved[every, widest] = halves[every, widest]
-    return np.concatenate([middles - moved, middles + moved]), np.concatenate([halves, halves])
 
 
 def _steps_in_z(

@@ -23,7 +23,7 @@ from wideberth.decide.arena import Arena, Cuts, no_cuts
 from wideberth.decide.desirability import sides, uncapped
 from wideberth.decide.judge import overall_desirability, own_setting, read_setting
 from wideberth.decide.many import Pool, refined
-from wideberth.decide.problem import Mode, Problem, arena
+from wideberth.decide.problem import Problem, arena, mode_of
 from wideberth.decide.recommend import solve
 from wideberth.decide.records import Choice, ResolvedGoal, Status
 from wideberth.decide.region import inside_planes
@@ -110,7 +110,7 @@ def trade_off(
     problem: Problem, choice: Choice, *, n_points: int = N_POINTS, progress: Progress = silent
 ) -> Frontier:
     """Cover the trade-off around a choice that `solve` gave with its problem."""
-    mode: Mode = "simultaneous" if problem.possible else "means"
+    mode = mode_of(problem)
     found: list[tuple[tuple[int, ...], FloatArray]] = []
     for done, levels in enumerate(problem.combinations):
         progress("frontier", done / len(problem.combinations))

@@ -12,9 +12,9 @@ from typing import Literal
 
 import numpy as np
 
-from wideberth.decide.problem import Mode, Problem, arena
+from wideberth.decide.problem import Mode, Problem
+from wideberth.decide.proving import best_everywhere
 from wideberth.decide.records import Choice, ResolvedGoal
-from wideberth.decide.search import Found, find_best
 from wideberth.fit.records import surface
 from wideberth.progress import Progress, silent
 from wideberth.quadratic.terms import features
@@ -181,14 +181,10 @@ def natural_step(size: float) -> float:
 
 def _solved(problem: Problem, mode: Mode) -> tuple[float, dict[str, float]] | None:
     """Find D and every response's mean at the free optimum over all levels."""
-    best: Found | None = None
-    where: tuple[int, ...] = ()
-    for levels in problem.combinations:
-        found = find_best(arena(problem, levels, mode))
-        if found is not None and (best is None or found.score > best.score):
-            best, where = found, levels
-    if best is None:
+    found = best_everywhere(problem, mode)
+    if found is None:
         return None
+    where, best = found
     terms = features(best.x)
     means = {
         model.response: float(terms @ surface(model, problem.study, levels=where).coefficients)

@@ -15,7 +15,7 @@ from wideberth.decide.arena import Arena
 from wideberth.decide.conformance import conformance_over, setting_sd
 from wideberth.decide.desirability import overall
 from wideberth.decide.judge import read_setting
-from wideberth.decide.problem import Problem, arena
+from wideberth.decide.problem import Problem, arena, mode_of
 from wideberth.decide.records import Choice, FactorMap, LimitMap
 from wideberth.fit.draws import Draws
 from wideberth.quadratic.terms import features
@@ -40,7 +40,7 @@ def factor_maps(
     if choice.setpoint is None or not len(moving):
         return ()
     levels, x = read_setting(study, choice.setpoint)
-    rows = arena(problem, levels, "simultaneous" if problem.possible else "means")
+    rows = arena(problem, levels, mode_of(problem))
     span = _spans(problem, x)
     if len(moving) == 1:
         only = _map(problem, rows, x, int(moving[0]), None, span)

@@ -12,9 +12,9 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from wideberth.decide.judge import own_setting
-from wideberth.decide.problem import Problem, arena
+from wideberth.decide.problem import Problem, mode_of
+from wideberth.decide.proving import best_everywhere
 from wideberth.decide.records import Choice
-from wideberth.decide.search import Found, find_best
 from wideberth.progress import Progress, silent
 from wideberth.study.records import FloatArray, Setting
 from wideberth.surface.explored import factor_ranges
@@ -88,13 +88,8 @@ _Place = tuple[tuple[int, ...], FloatArray]
 
 def _best(problem: Problem) -> _Place | None:
     """Find the free optimum over all levels."""
-    best: Found | None = None
-    where: tuple[int, ...] = ()
-    for levels in problem.combinations:
-        found = find_best(arena(problem, levels, "simultaneous" if problem.possible else "means"))
-        if found is not None and (best is None or found.score > best.score):
-            best, where = found, levels
-    return None if best is None else (where, best.x)
+    found = best_everywhere(problem, mode_of(problem))
+    return None if found is None else (found[0], found[1].x)
 
 
 def _near(problem: Problem) -> FloatArray:

@@ -153,6 +153,11 @@ def drawn_arena(problem: Problem, levels: tuple[int, ...], mode: Mode, draws: Dr
     return replace(bare, goals=problem.goals, goal_means=means, hard=(*rows, *bare.hard))
 
 
+def mode_of(problem: Problem) -> Mode:
+    """Guard limits as stated where that can be computed, else by the fitted means."""
+    return "simultaneous" if problem.possible else "means"
+
+
 def _limit_sides(study: Study) -> tuple[LimitSide, ...]:
     sides = []
     for response in study.responses:

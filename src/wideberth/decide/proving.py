@@ -9,7 +9,7 @@ import numpy as np
 from wideberth.decide.arena import no_cuts
 from wideberth.decide.certificate import Certificate, bound_desirability
 from wideberth.decide.problem import Mode, Problem, arena
-from wideberth.decide.search import Found, local_optima
+from wideberth.decide.search import Found, find_best, local_optima
 from wideberth.decide.settable import Grid
 
 
@@ -58,3 +58,13 @@ def possible_gains(
             on_grid = bound_desirability(rows, cuts, optima, settable, axes=grid.axes)
         settable_bound = max(settable_bound, min(on_grid.bound, whole.bound))
     return Gains(max(free_bound - free, 0.0), max(settable_bound - settable, 0.0))
+
+
+def best_everywhere(problem: Problem, mode: Mode) -> tuple[tuple[int, ...], Found] | None:
+    """Find the free optimum over all levels: (levels, found), ``None`` where nothing holds."""
+    best: tuple[tuple[int, ...], Found] | None = None
+    for levels in problem.combinations:
+        found = find_best(arena(problem, levels, mode))
+        if found is not None and (best is None or found.score > best[1].score):
+            best = (levels, found)
+    return best

@@ -26,7 +26,7 @@ from wideberth.decide.judge import (
     read_setting,
 )
 from wideberth.decide.pins import with_pins
-from wideberth.decide.problem import Mode, Problem, arena, build_problem
+from wideberth.decide.problem import Mode, Problem, arena, build_problem, mode_of
 from wideberth.decide.proving import Gains, possible_gains
 from wideberth.decide.records import Bare, Choice, Conflict, LimitVerdict, Status
 from wideberth.decide.region import inside
@@ -238,7 +238,7 @@ def _describe(
     asked: bool = False,
 ) -> Choice:
     study, levels, x = problem.study, answer.levels, answer.settable.x
-    stated: Mode = "simultaneous" if problem.possible else "means"
+    stated = mode_of(problem)
     rows = arena(problem, levels, stated)
     verdicts = limit_verdicts(problem, rows, x)
     free = answer.free.x

@@ -18,7 +18,7 @@ import numpy as np
 
 from wideberth.decide.arena import HardRow
 from wideberth.decide.guards import SmoothGuard
-from wideberth.quadratic.box import extreme_over_box, lowest_on_boxes
+from wideberth.quadratic.box import extreme_over_box, halved, lowest_on_boxes
 from wideberth.quadratic.stack import Stack
 from wideberth.quadratic.terms import features, pairs
 from wideberth.study.records import FloatArray
@@ -61,7 +61,7 @@ def prove_over_box(row: HardRow, low: FloatArray, high: FloatArray, level: float
         left = bound < level
         if boxes > _BUDGET:
             return Proof(not left.any(), None, boxes)
-        middles, halves = _halved(middles[left], halves[left])
+        middles, halves = halved(middles[left], halves[left])
     return Proof(True, None, boxes)
 
 
@@ -117,13 +117,3 @@ def _feature_reach(middles: FloatArray, halves: FloatArray) -> FloatArray:
         + halves[:, first] * halves[:, second]
     )
     return np.concatenate([np.zeros((len(middles), 1)), halves, squares, products], axis=1)
-
-
-def _halved(middles: FloatArray, halves: FloatArray) -> tuple[FloatArray, FloatArray]:
-    """Cut every box in two across its widest side."""
-    widest, every = halves.argmax(axis=1), np.arange(len(halves))
-    halves = halves.copy()
-    halves[every, widest] /= 2
-    moved = np.zeros_like(middles)
-    moved[every, widest] = halves[every, widest]
-    return np.concatenate([middles - moved, middles + moved]), np.concatenate([halves, halves])

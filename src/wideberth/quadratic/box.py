@@ -65,6 +65,16 @@ def lowest_on_boxes(slope: FloatArray, bend: FloatArray, halves: FloatArray) -> 
     return result
 
 
+def halved(middles: FloatArray, halves: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """Cut every box, middles and half-widths (n, k), in two across its widest side: (2n, k)."""
+    widest, every = halves.argmax(axis=1), np.arange(len(halves))
+    halves = halves.copy()
+    halves[every, widest] /= 2
+    moved = np.zeros_like(middles)
+    moved[every, widest] = halves[every, widest]
+    return np.concatenate([middles - moved, middles + moved]), np.concatenate([halves, halves])
+
+
 def _stationary_on_faces(
     stack: Stack, low: FloatArray, high: FloatArray, free: IntArray, loose: IntArray
 ) -> FloatArray:
