@@ -89,7 +89,8 @@ def command(
 def print_frontier(answer: Frontier, study: Study) -> None:
     """Print the frontier, best overall desirability first."""
     from wideberth.report.numbers import named
-    from wideberth.report.wording import CAUTIONS, frontier_row
+    from wideberth.report.rows import frontier_row
+    from wideberth.report.wording import CAUTIONS
 
     if answer.reason:
         click.echo(f"No frontier: {answer.reason}.")

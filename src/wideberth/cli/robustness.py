@@ -62,29 +62,16 @@ def command(
 
 def print_robustness(answer: Robustness, study: Study) -> None:
     """Print what setting error does to every response."""
-    from wideberth.report.numbers import format_range, format_value, named
-    from wideberth.report.wording import CAUTIONS, conformance_words, setting_words, shares_words
+    from wideberth.report.rows import wander_row
+    from wideberth.report.wording import CAUTIONS, conformance_words, setting_words
 
     if answer.setting is None:
         click.echo(answer.advice)
         return
     click.echo(f"Setting: {setting_words(study, answer.setting)}.")
     print_findings(answer.findings)
-    rows = []
-    for name, one in answer.responses.items():
-        size = one.sd_total or one.sd_setting or None
-        rows.append(
-            (
-                named(name, one.unit),
-                format_value(one.shift, size),
-                format_value(one.sd_setting, size),
-                "not known" if one.sd_batch is None else format_value(one.sd_batch, size),
-                "not known" if one.sd_total is None else format_value(one.sd_total, size),
-                format_range(*one.worst, size),
-                shares_words(one.shares),
-            )
-        )
-    header = ("response", "shift", "sd setting", "sd batch", "sd total", "room", "makes it")
+    rows = [wander_row(name, one) for name, one in answer.responses.items()]
+    header = ("response", "shift", "sd setting", "sd batch", "room", "makes it")
     click.echo("")
     print_table(header, rows)
     if answer.conformance is not None:

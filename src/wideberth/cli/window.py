@@ -53,11 +53,10 @@ def command(study_dir: str, *, at: str | None, seed: int | None, as_json: bool, 
 
 def print_window(box: Window, study: Study) -> None:
     """Print a window, or what stands against one."""
-    from wideberth.report.numbers import named
+    from wideberth.report.rows import window_row
     from wideberth.report.wording import (
         CAUTIONS,
         SINGLY_WARNING,
-        ends_words,
         setting_words,
         window_sentence,
     )
@@ -67,17 +66,7 @@ def print_window(box: Window, study: Study) -> None:
     click.echo(window_sentence(box))
     for sentence in box.must_give:
         click.echo(f"  {sentence}")
-    rows = [
-        (
-            named(factor.name, factor.unit),
-            ends_words(factor, box.settable[factor.name], inwards=True),
-            box.stopped_by[factor.name].low or "nothing",
-            box.stopped_by[factor.name].high or "nothing",
-            ends_words(factor, box.singly[factor.name], inwards=True),
-        )
-        for factor in study.numeric
-        if box.status == "proven"
-    ]
+    rows = [window_row(box, factor) for factor in study.numeric if box.status == "proven"]
     if rows:
         click.echo("")
         print_table(("factor", "window", "stopped below by", "above by", "alone"), rows)

@@ -6,6 +6,7 @@ from wideberth.chain.record import Record
 from wideberth.report.blocks import Block, Bullets, Drawing, Heading, Paragraph, Table
 from wideberth.report.numbers import format_range, format_setting, format_value, named, with_unit
 from wideberth.report.ridge_figure import draw_ridge
+from wideberth.report.rows import wander_row, window_row
 from wideberth.report.shares_figure import draw_shares
 from wideberth.report.style import to_svg
 from wideberth.report.wording import (
@@ -112,16 +113,7 @@ def _window(record: Record) -> list[Block]:
     blocks: list[Block] = [Heading(3, "Operating window"), Paragraph(window_sentence(box))]
     if box.status == "none":
         return [*blocks, Bullets("What must give", box.must_give, tone="doubt")]
-    rows = tuple(
-        (
-            named(f.name, f.unit),
-            ends_words(f, box.settable[f.name], inwards=True),
-            box.stopped_by[f.name].low or "nothing",
-            box.stopped_by[f.name].high or "nothing",
-            ends_words(f, box.singly[f.name], inwards=True),
-        )
-        for f in record.study.numeric
-    )
+    rows = tuple(window_row(box, factor) for factor in record.study.numeric)
     header = ("Factor", "Window", "Stopped below by", "Stopped above by", "Taken alone")
     return [*blocks, Table("The window and what stops it", header, rows), Paragraph(SINGLY_WARNING)]
 
@@ -130,19 +122,7 @@ def _wandering(record: Record) -> list[Block]:
     answer = record.robustness
     if not any(one.shares for one in answer.responses.values()):
         return [Heading(3, "When settings wander"), Paragraph(answer.advice)]
-    rows = []
-    for name, one in answer.responses.items():
-        size = one.sd_total or one.sd_setting or None
-        rows.append(
-            (
-                named(name, one.unit),
-                format_value(one.shift, size),
-                format_value(one.sd_setting, size),
-                "not known" if one.sd_batch is None else format_value(one.sd_batch, size),
-                format_range(*one.worst, size),
-                shares_words(one.shares),
-            )
-        )
+    rows = tuple(wander_row(name, one) for name, one in answer.responses.items())
     header = (
         "Response",
         "Shift of the mean",
@@ -160,7 +140,7 @@ def _wandering(record: Record) -> list[Block]:
             f" response follows exactly from the equations. {answer.advice}"
         ),
         Drawing(figure, f"Shares of variance by factor: {alt}.", "What setting error adds."),
-        Table("What wandering settings do", header, tuple(rows)),
+        Table("What wandering settings do", header, rows),
     ]
 
 

@@ -5,10 +5,7 @@ from __future__ import annotations
 import math
 from collections.abc import Mapping
 
-import numpy as np
-
 from wideberth.decide.conformance import Conformance
-from wideberth.decide.frontier import Frontier, FrontierPoint
 from wideberth.decide.records import Choice, LimitVerdict, Status
 from wideberth.operate.records import Window
 from wideberth.report.numbers import decimals_of, format_setting, format_value, with_unit
@@ -239,20 +236,6 @@ def signed(value: float, uncertainty: float | None) -> str:
     """Write a number with its sign."""
     text = format_value(value, uncertainty)
     return text if text.startswith("-") else f"+{text}"
-
-
-def frontier_row(answer: Frontier, point: FrontierPoint, study: Study) -> tuple[str, ...]:
-    """Write one setting of the frontier: settings, means of the goals' responses, D."""
-    means = np.array([[p.means[g.response] for g in answer.goals] for p in answer.points])
-    spans = np.ptp(means, axis=0) if len(answer.points) > 1 else np.zeros(len(answer.goals))
-    return (
-        *(format_setting(study, f.name, point.setting[f.name]) for f in study.factors),
-        *(
-            format_value(point.means[goal.response], float(span) / 10 or None)
-            for goal, span in zip(answer.goals, spans, strict=True)
-        ),
-        f"{point.desirability:.3f}",
-    )
 
 
 def setting_words(study: Study, setting: Setting) -> str:
