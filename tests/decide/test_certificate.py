@@ -131,6 +131,27 @@ def test_every_settable_setting_by_hand_against_the_gap():
     assert choice.unrounded.desirability > choice.desirability
 
 
+def test_a_bound_on_the_steps_stays_above_every_one_of_them_when_the_claim_is_too_low():
+    # single settings stay open then; none of the others may be forgotten
+    rng = np.random.default_rng(3)
+    x = central_composite(2, n_centre=6)
+    y = 60 + 3 * x[:, 0] - 4 * (x**2).sum(axis=1) + 0.4 * rng.standard_normal(len(x))
+    models = fit(make_study(x, {"y": y}, goals={"y": more(30, 65)}))
+    problem = build_problem(models, seed=1, room=False)
+    rows = arena(problem, (), "simultaneous")
+    # uneven values, as a factor on a log scale has them: some boxes shrink to a setting early
+    uneven = np.array([-1.3, -0.2, 0.3, 0.35, 0.4, 0.42, 0.44, 0.46, 0.5])
+    other = np.array([-1.0, -0.03, -0.02, -0.01, 0.0, 0.01])
+    places = np.array(list(product(uneven, other)))
+    places = places[(places**2).sum(axis=1) <= 2.0]
+    best = float(np.exp(log_d(models, places)).max())
+    none, axes = np.zeros((0, 2)), ((0, uneven), (1, other))
+    for claim in (0.05, 0.2, 0.5, 0.8):
+        proof = bound_desirability(rows, no_cuts(rows), none, claim * best, axes=axes)
+        assert proof.bound >= best - 1e-9
+        assert not proof.closed
+
+
 def test_levels_of_a_categorical_factor_are_all_bounded():
     x = np.concatenate([central_composite(2, n_centre=4)] * 2)
     level = np.repeat([0, 1], len(x) // 2)

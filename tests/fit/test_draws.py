@@ -5,9 +5,9 @@ import pytest
 from scipy import stats
 
 from support.build import central_composite, make_study
-from wideberth.decide.arena import features
 from wideberth.fit.draws import draw_coefficients, why_no_draws
 from wideberth.fit.models import fit
+from wideberth.quadratic.terms import features
 from wideberth.study.records import Goal
 
 N = 20_000

@@ -91,7 +91,7 @@ def bound_desirability(
     mixtures = [mixture for mixture in found if mixture is not None]
     steps = _steps_in_z(arena, axes)
     level = np.log(best + gap)
-    highest, boxes = best, 0
+    highest, boxes, closed = best, 0, True
     while len(middles):
         boxes += len(middles)
         bounds = np.concatenate(
@@ -109,15 +109,15 @@ def bound_desirability(
         if boxes > budget and left.any():
             return Certificate(min(float(np.exp(bounds.max())), 1.0), boxes, closed=False)
         middles, halves = middles[left], halves[left]
-        points = halves.max(axis=1, initial=0.0) <= 0.0
+        points = halves.max(axis=1) <= 0.0
         if points.any():
-            # a single settable setting that the places of the cuts do not exclude
-            value = float(np.exp(bounds[left][points].max()))
-            return Certificate(max(highest, value), boxes, closed=False)
-        middles, halves = halved(middles, halves)
+            # single settable settings that the places of the cuts do not exclude stay open
+            closed = False
+            highest = max(highest, float(np.exp(bounds[left][points].max())))
+        middles, halves = halved(middles[~points], halves[~points])
         if steps:
             middles, halves = _on_values(middles, halves, steps)
-    return Certificate(min(highest, 1.0), boxes, closed=True)
+    return Certificate(min(highest, 1.0), boxes, closed)
 
 
 def _first_box(arena: Arena, relaxed: Relaxed) -> tuple[FloatArray, FloatArray]:
@@ -222,7 +222,9 @@ def _above(relaxed: Relaxed, mixture: Mixture, places: FloatArray) -> FloatArray
     for weight, row in zip(mixture.rows, relaxed.rows, strict=True):
         if weight > 0:
             total += weight * row_above(row, places)
+    # rows and planes that count as held may lack a hair
     total[:, 0] += mixture.planes @ relaxed.bounds
+    total[:, 0] += _ROUNDING * (mixture.planes.sum() + mixture.rows.sum())
     total[:, 1 : 1 + r] -= mixture.planes @ relaxed.planes
     return total
 

@@ -11,8 +11,9 @@ from dataclasses import replace
 
 import numpy as np
 
-from wideberth.decide.arena import goal_targets, goal_values, log_desirability
+from wideberth.decide.arena import goal_values
 from wideberth.decide.conformance import conformance, setting_sd
+from wideberth.decide.desirability import overall
 from wideberth.decide.judge import predictions, read_setting
 from wideberth.decide.problem import Mode, Problem, arena
 from wideberth.decide.recommend import solve
@@ -23,7 +24,7 @@ from wideberth.fit.records import Models, design_map, level_names
 from wideberth.progress import Progress, silent
 from wideberth.quadratic.terms import features
 from wideberth.study.coding import to_actual
-from wideberth.study.records import Finding, FloatArray, Setting
+from wideberth.study.records import Finding, Setting
 from wideberth.surface.explored import factor_ranges
 from wideberth.uncertainty.cloud import Cloud, cloud_of, desirability_at, on_edge
 from wideberth.uncertainty.location import FEWEST, optimum_region
@@ -201,7 +202,8 @@ def _optimism(problem: Problem, choice: Choice, draws: Draws, cloud: Cloud) -> O
         own = cloud.combination == place
         if not own.any():
             continue
-        fitted = _fitted_desirability(problem, combination, cloud)
+        rows = arena(problem, combination, "means")
+        fitted = overall(rows.goals, goal_values(rows, cloud.x))
         flattery[own] = (cloud.desirability - fitted)[own]
         for model in problem.models.models:
             mapped = design_map(model, problem.study, levels=combination)
@@ -215,14 +217,6 @@ def _optimism(problem: Problem, choice: Choice, draws: Draws, cloud: Cloud) -> O
         corrected=float(np.clip(best - bias, 0.0, 1.0)),
         responses={name: (bias, means[name] - bias) for name, bias in biases.items()},
     )
-
-
-def _fitted_desirability(problem: Problem, levels: tuple[int, ...], cloud: Cloud) -> FloatArray:
-    rows = arena(problem, levels, "means")
-    with np.errstate(divide="ignore"):
-        log_d = log_desirability(rows, goal_targets(rows, goal_values(rows, cloud.x)))
-    result: FloatArray = np.exp(log_d)
-    return result
 
 
 def _hardly_located(problem: Problem, region: OptimumRegion | None) -> list[str]:

@@ -6,7 +6,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from wideberth.decide.arena import goal_targets, goal_values, log_desirability
+from wideberth.decide.arena import goal_values
+from wideberth.decide.desirability import overall
 from wideberth.decide.many import find_many
 from wideberth.decide.problem import Mode, Problem, drawn_arena
 from wideberth.decide.region import Region
@@ -73,11 +74,7 @@ def desirability_at(
     """Give D of every draw at coded settings x, (k,) or one a draw (n, k); shape (n,)."""
     rows = drawn_arena(problem, levels, "means", draws)
     every = np.broadcast_to(x, (draws.n_draws, x.shape[-1]))
-    with np.errstate(divide="ignore"):
-        result: FloatArray = np.exp(
-            log_desirability(rows, goal_targets(rows, goal_values(rows, every)))
-        )
-    return result
+    return overall(rows.goals, goal_values(rows, every))
 
 
 def on_edge(region: Region, x: FloatArray) -> BoolArray:
