@@ -12,8 +12,10 @@ import numpy as np
 
 from wideberth import __version__
 from wideberth.chain.record import Record
+from wideberth.decide.alternatives import Alternative
 from wideberth.decide.frontier import Frontier
 from wideberth.decide.give_ups import GiveUp
+from wideberth.decide.prospects import Prospects
 from wideberth.decide.records import Choice
 from wideberth.errors import Fault
 from wideberth.fit.records import Model, Models
@@ -91,6 +93,17 @@ def give_ups_json(costs: tuple[GiveUp, ...]) -> list[Any]:
     ]
 
 
+def alternatives_json(found: tuple[Alternative, ...]) -> list[Any]:
+    """Give what other aims would name."""
+    return [_plain(one) for one in found]
+
+
+def prospects_json(found: Prospects) -> Json:
+    """Give what more evidence would buy."""
+    content: Json = _plain(found)
+    return content
+
+
 def frontier_json(answer: Frontier, study: Study) -> Json:
     """Give the answer of ``frontier``."""
     return {**_head("frontier", study), **_plain(answer)}
@@ -135,6 +148,8 @@ def record_json(record: Record) -> Json:
         "give_ups": give_ups_json(record.give_ups),
         "priorities": None if record.priorities is None else _plain(record.priorities),
         "frontier": None if record.frontier is None else _plain(record.frontier),
+        "alternatives": alternatives_json(record.alternatives),
+        "prospects": prospects_json(record.prospects),
         "maps": _plain(record.maps),
     }
 

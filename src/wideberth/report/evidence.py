@@ -11,6 +11,7 @@ from wideberth.report.figures import draw_line, draw_map, draw_margins, draw_res
 from wideberth.report.frontier_figure import draw_frontier
 from wideberth.report.give_up_words import bound_words, step_words
 from wideberth.report.numbers import format_value, named, with_unit
+from wideberth.report.options import options
 from wideberth.report.rows import frontier_row
 from wideberth.report.style import to_svg
 from wideberth.report.wording import (
@@ -49,6 +50,7 @@ def evidence(record: Record) -> tuple[Block, ...]:
         *_maps(record),
         *assurance(record),
         *_goals(record),
+        *options(record),
         *_models(record),
         *_geometry(record),
         Heading(3, "Methods and sources"),

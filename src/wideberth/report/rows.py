@@ -4,10 +4,12 @@ from __future__ import annotations
 
 import numpy as np
 
+from wideberth.decide.alternatives import Alternative
 from wideberth.decide.frontier import Frontier, FrontierPoint
+from wideberth.fit.records import Models
 from wideberth.operate.records import Wander, Window
 from wideberth.report.numbers import format_range, format_setting, format_value, named
-from wideberth.report.wording import ends_words, shares_words
+from wideberth.report.wording import batches_in_100, ends_words, setting_words, shares_words
 from wideberth.study.records import NumericFactor, Study
 
 
@@ -48,3 +50,26 @@ def frontier_row(answer: Frontier, point: FrontierPoint, study: Study) -> tuple[
         ),
         f"{point.desirability:.3f}",
     )
+
+
+def alternative_header(models: Models) -> tuple[str, ...]:
+    """Head the table of aims: aim, setting, every response, batches inside all limits, D."""
+    names = (named(model.response, model.unit) for model in models.models)
+    return ("Aim", "Setting", *names, "Inside all limits", "D")
+
+
+def alternative_row(
+    one: Alternative, every: tuple[Alternative, ...], study: Study
+) -> tuple[str, ...]:
+    """Write one aim: its setting, each mean with the spread from settings, conformance, D."""
+    cells = []
+    for name, mean in one.means.items():
+        means = [other.means[name] for other in every if other.means]
+        size = float(max(np.ptp(means) / 5, one.setting_sd[name])) or None
+        spread = one.setting_sd[name]
+        text = format_value(mean, size)
+        cells.append(f"{text} ({format_value(spread, spread)})" if spread > 0 else text)
+    inside = "not known" if one.conformance is None else batches_in_100(one.conformance.mean)
+    score = "" if one.desirability is None else f"{one.desirability:.3f}"
+    setting = "" if one.setpoint is None else setting_words(study, one.setpoint)
+    return (one.aim, setting, *cells, inside, score)

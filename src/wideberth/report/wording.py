@@ -34,11 +34,21 @@ _ASKED_SENTENCE: dict[Status, str] = {
     "unreached": "This setting holds the limits but does not reach every goal.",
 }
 
+_NONE_PROVEN = (
+    "That none does is proven on the fitted equations, over every allowed setting; it was not"
+    " merely searched for."
+)
+_NONE_FOUND = "None was found; the proof that there is none stayed open within its budget of boxes."
+
 
 def status_sentence(choice: Choice) -> str:
     """Say what the status means, for a setting that was found or one that was given."""
     found = STATUS_SENTENCE[choice.status]
-    return _ASKED_SENTENCE.get(choice.status, found) if choice.asked else found
+    if choice.asked:
+        return _ASKED_SENTENCE.get(choice.status, found)
+    if choice.none_holds is None or choice.status == "unsupported":
+        return found
+    return f"{found} {_NONE_PROVEN if choice.none_holds else _NONE_FOUND}"
 
 
 def proof_sentence(choice: Choice) -> str:
