@@ -25,6 +25,7 @@ from wideberth.surface.records import Shape
 from wideberth.uncertainty.records import Uncertainty
 
 Json = dict[str, Any]
+_NOT_TOLD = ("formula", "joined")
 
 
 def dumps(content: Json) -> str:
@@ -212,7 +213,7 @@ def _plain(value: Any) -> Any:
         return {
             field.name: _plain(getattr(value, field.name))
             for field in fields(value)
-            if field.name != "formula"
+            if field.name not in _NOT_TOLD
         }
     if isinstance(value, Mapping):
         return {str(key): _plain(item) for key, item in value.items()}

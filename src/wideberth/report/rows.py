@@ -11,6 +11,7 @@ from wideberth.operate.records import Wander, Window
 from wideberth.report.numbers import format_range, format_setting, format_value, named
 from wideberth.report.wording import batches_in_100, ends_words, setting_words, shares_words
 from wideberth.study.records import NumericFactor, Study
+from wideberth.uncertainty.records import OptimumRegion, Uncertainty
 
 
 def window_row(box: Window, factor: NumericFactor) -> tuple[str, ...]:
@@ -36,6 +37,26 @@ def wander_row(name: str, one: Wander) -> tuple[str, ...]:
         format_range(*one.worst, size),
         shares_words(one.shares),
     )
+
+
+def region_header(sure: Uncertainty) -> tuple[str, ...]:
+    """Head the table of the optimum's region: factor, setting, one column a level."""
+    return ("Factor", "Setting", *(f"{100 * region.level:g} %" for region in _regions(sure)))
+
+
+def region_row(sure: Uncertainty, factor: NumericFactor, study: Study) -> tuple[str, ...]:
+    """Write one factor's smallest and largest value in the region at each level."""
+    setting = (
+        ""
+        if sure.setting is None
+        else format_setting(study, factor.name, sure.setting[factor.name])
+    )
+    ends = (ends_words(factor, region.ranges[factor.name]) for region in _regions(sure))
+    return (named(factor.name, factor.unit), setting, *ends)
+
+
+def _regions(sure: Uncertainty) -> tuple[OptimumRegion, ...]:
+    return (*sure.narrower, *((sure.region,) if sure.region is not None else ()))
 
 
 def frontier_row(answer: Frontier, point: FrontierPoint, study: Study) -> tuple[str, ...]:
