@@ -34,6 +34,7 @@ FLOORS = {
 COMMANDS = (
     "start",
     "check",
+    "plan",
     "fit",
     "shape",
     "recommend",

@@ -10,6 +10,7 @@ import click
 _COMMANDS = (
     "start",
     "check",
+    "plan",
     "fit",
     "shape",
     "recommend",

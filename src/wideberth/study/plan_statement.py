@@ -30,8 +30,8 @@ def _unused_keys(plan: PlanTable, at: Callable[..., str]) -> Iterator[Fault]:
     stated = plan.model_fields_set
     for key, designs in _TAKEN_BY.items():
         if key in stated and plan.design not in designs:
-            mend = f"take {key} out; it goes with {' and '.join(designs)}"
-            yield Fault(f"a {plan.design} design takes no {key}", at("plan", key), mend)
+            mend = f"take {key} out; it goes with {' or '.join(designs)}"
+            yield Fault(f"design '{plan.design}' takes no {key}", at("plan", key), mend)
     if isinstance(plan.centre_runs, list) and plan.design != "central composite":
         yield Fault(
             "centre_runs holds two numbers",

@@ -66,7 +66,7 @@ def _read(folder: Path, overrides: Mapping[str, object], *, draft: bool) -> Stud
     found = list(statement.faults())
     if found:
         # the sheet can still be read against the names when those are sound
-        raise InputError([*found, *_sheet_faults(folder, statement)])
+        raise InputError([*found, *_sheet_faults(folder, statement, draft=draft)])
     factors, responses = statement.factors(), statement.responses()
     sheet = read_sheet(folder, tables.study.runs, factors, responses, draft=draft)
     late = [*sheet.faults, *(() if draft else statement.block_faults(sheet))]
@@ -141,7 +141,7 @@ def _decode(raw: bytes) -> str:
         ) from error
 
 
-def _sheet_faults(folder: Path, statement: Statement) -> tuple[Fault, ...]:
+def _sheet_faults(folder: Path, statement: Statement, *, draft: bool) -> tuple[Fault, ...]:
     """Read the sheet as well when factors and responses can be built at all."""
     tables = statement.tables
     sound = (
@@ -154,4 +154,5 @@ def _sheet_faults(folder: Path, statement: Statement) -> tuple[Fault, ...]:
     )
     if not sound:
         return ()
-    return read_sheet(folder, tables.study.runs, statement.factors(), statement.responses()).faults
+    factors, responses = statement.factors(), statement.responses()
+    return read_sheet(folder, tables.study.runs, factors, responses, draft=draft).faults

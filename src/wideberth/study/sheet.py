@@ -57,7 +57,8 @@ def read_sheet(
     """
     raw, fault = _sheet_bytes(folder, file)
     if draft and (raw == template_sheet().encode() or fault == _missing(folder, file)):
-        return SheetContent(no_runs(file, factors, responses), ())
+        found = hashlib.sha256(raw).hexdigest() if raw else ""
+        return SheetContent(no_runs(file, factors, responses), (), sha256=found)
     if fault is not None:
         return SheetContent(None, (fault,))
     table, faults = _split(raw, file)
@@ -66,7 +67,9 @@ def read_sheet(
     if not table.rows:
         empty = Fault("the sheet holds no run", file, "add one row a run below the header")
         return (
-            SheetContent(no_runs(file, factors, responses), ())
+            SheetContent(
+                no_runs(file, factors, responses), (), sha256=hashlib.sha256(raw).hexdigest()
+            )
             if draft
             else SheetContent(None, (empty,))
         )
@@ -175,6 +178,12 @@ def _interpret(
     return SheetContent(None if faults else runs, tuple(faults), notes)
 
 
+def header_name(heading: str) -> str:
+    """Take the unit off a heading."""
+    match = _HEADER.fullmatch(heading)
+    return match["name"] if match else heading
+
+
 def _columns(
     table: SheetTable, factors: tuple[Factor, ...], responses: tuple[Response, ...]
 ) -> tuple[dict[str, int], list[Fault]]:
@@ -186,7 +195,7 @@ def _columns(
     where = f"{table.file} row 1"
     for index, heading in enumerate(table.header):
         match = _HEADER.fullmatch(heading)
-        name = match["name"] if match else heading
+        name = header_name(heading)
         unit = match["unit"] if match else None
         if name in columns and (name in units or name in ("run", "block", "kind", "note")):
             faults.append(Fault(f"two columns are called {name}", where, "rename or delete one"))
