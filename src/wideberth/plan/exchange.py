@@ -78,7 +78,9 @@ def best_rows(
         chosen = np.concatenate(
             [random.choice(pool, n) for pool, n in zip(pools, task.sizes, strict=True)]
         ).astype(np.int64)
-        chosen = _exchanged(task, chosen, "D", _RIDGE)
+        # from the best determinant or from anywhere: the two lead to different plans
+        first: Literal["D", "I"] = "D" if start % 2 == 0 else criterion
+        chosen = _exchanged(task, chosen, first, _RIDGE)
         if criterion == "I" and np.isfinite(task.score(chosen, "I")):
             chosen = _exchanged(task, chosen, "I", 0.0)
         score = task.score(chosen, criterion)

@@ -60,7 +60,7 @@ def optimal_design(
     fixed = old.T @ old + rows[middles].T @ rows[middles]
     group = np.repeat(np.arange(len(blocks)), m)
     task = Task(rows, group, sizes, fixed, _moments(model, study, earlier))
-    n_starts = 3 if rows.size > _LARGE else 8
+    n_starts = 8 if rows.size > _LARGE else 12
     chosen, score = best_rows(task, choice.criterion, seed=seed, n_starts=n_starts)
     if not np.isfinite(score):
         raise _too_few(sum(sizes) + len(middles), len(model.terms), n_old)

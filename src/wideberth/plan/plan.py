@@ -210,6 +210,18 @@ def _ratio(stated: PlannedModel, other: PlannedModel) -> float | None:
     return None if means[0] is None or means[1] is None else means[1] / means[0]
 
 
+def variance_over(plan: Plan, other: Plan) -> float | None:
+    """Average another plan's prediction variance over the region that a plan covers.
+
+    ``None`` where the other one cannot estimate all that the plan can.
+    """
+    models = [
+        planned_model(p.fitted, p.choice.order if p.choice.design == "optimal" else 2)
+        for p in (plan, other)
+    ]
+    return _mean_variance(models[0], models[1])
+
+
 def _mean_variance(stated: PlannedModel, other: PlannedModel) -> float | None:
     """Average another plan's prediction variance over the region that the stated one covers."""
     names = [{t.name for t in model.terms if t.block is None} for model in (stated, other)]

@@ -34,6 +34,7 @@ _N_DIRECTIONS = 300
 _N_RADII = 21
 _POWER, _LEVEL = 0.8, 0.05
 _N_LEVELS = 200
+_FAR = 5.0
 
 
 def quality(model: PlannedModel, *, seed: int) -> Quality:
@@ -160,7 +161,9 @@ def detectable_change(variance: float, df: int) -> float | None:
     t = float(stdtrit(df, 1 - _LEVEL / 2))
 
     def power(shift: float) -> float:
-        return float(1 - nctdtr(df, shift, t) + nctdtr(df, shift, -t))
+        # far out the wrong tail is nothing, and the library has no number for it
+        wrong = float(nctdtr(df, shift, -t)) if shift < _FAR else 0.0
+        return 1.0 - float(nctdtr(df, shift, t)) + wrong
 
     return _where_reached(power, _POWER) * float(np.sqrt(variance))
 

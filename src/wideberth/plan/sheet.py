@@ -27,7 +27,9 @@ def headings(study: Study) -> list[str]:
         if isinstance(factor, NumericFactor):
             factors.append(_with_unit(factor.name + AS_RUN, factor.unit))
     responses = [_with_unit(r.name, r.unit) for r in study.measured]
-    return ["run", "block", "kind", *factors, *responses, "lot", "note"]
+    taken = {one.name for one in (*study.factors, *study.responses)}
+    lot = [] if "lot" in taken else ["lot"]
+    return ["run", "block", "kind", *factors, *responses, *lot, "note"]
 
 
 def cells(run: PlannedRun) -> dict[str, Cell]:

@@ -20,14 +20,14 @@ def draw_plan(plan: Plan, other: Plan | None = None) -> Figure:
     if other is not None:
         plans.append((other, RUST, "--", "beside"))
     with house_style():
-        figure = Figure(figsize=(WIDTH, 2.6), layout="constrained")
+        figure = Figure(figsize=(WIDTH, 2.9), layout="constrained")
         left, right = figure.subplots(1, 2)
         for one, colour, line, name in plans:
             _spheres(left, one, colour, line)
             _shares(right, one, colour, line, name)
         left.set_xlabel("distance from the centre [coded]")
-        left.set_ylabel("variance of the fitted mean [error variance]")
-        right.set_xlabel("variance of the fitted mean [error variance]")
+        left.set_ylabel("prediction variance [error variance]")
+        right.set_xlabel("prediction variance [error variance]")
         right.set_ylabel("share of the region below it [%]")
         right.set_ylim(0, 102)
         right.set_xlim(left=0)

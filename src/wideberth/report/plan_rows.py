@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
+from wideberth.plan.plan import variance_over
 from wideberth.plan.records import Plan, PlannedRun, WayOut
 from wideberth.report.numbers import format_setting, format_value, with_unit
 from wideberth.study.records import Study
@@ -19,6 +20,10 @@ def quality_rows(plan: Plan) -> list[tuple[str, str]]:
 def side_by_side(first: Plan, second: Plan) -> list[tuple[str, str, str]]:
     """List two plans in one table; a value that only one of them has is left empty."""
     one, other = dict(quality_rows(first)), dict(quality_rows(second))
+    shared = variance_over(first, second)
+    if first.quality.mean_variance is not None and shared is not None:
+        label = "prediction variance, average of the first plan's region [error variance]"
+        one[label], other[label] = _three(first.quality.mean_variance), _three(shared)
     labels = dict.fromkeys([*one, *other])
     return [(label, one.get(label, ""), other.get(label, "")) for label in labels]
 
@@ -61,8 +66,14 @@ def _variances(plan: Plan) -> Iterator[tuple[str, str]]:
     if quality.largest_leverage is not None:
         yield "largest leverage", f"{quality.largest_leverage:.2f}"
     if quality.mean_variance is not None and quality.most_variance is not None:
-        yield "prediction variance, average [error variance]", _three(quality.mean_variance)
-        yield "prediction variance, largest [error variance]", _three(quality.most_variance)
+        yield (
+            "prediction variance, average of its region [error variance]",
+            _three(quality.mean_variance),
+        )
+        yield (
+            "prediction variance, largest in its region [error variance]",
+            _three(quality.most_variance),
+        )
     if quality.uneven is not None:
         yield "unevenness on spheres", uneven_words(quality.uneven)
     if len(plan.fitted.runs.blocks) > 1:

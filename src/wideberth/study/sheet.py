@@ -170,7 +170,8 @@ def _interpret(
         kind=kinds,
         order=reader.order(),
         note=tuple(reader.texts("note")),
-        filled=bool(np.isfinite(values).any() or np.isfinite(as_run).any()) or reader.remarked(),
+        filled=bool(np.isfinite(values).any() or np.isfinite(as_run).any())
+        or reader.remarked(lots="lot" not in {f.name for f in (*factors, *responses)}),
     )
     if not faults and not draft:
         faults += _enough(runs, fitted, measured, table.file)
@@ -244,11 +245,14 @@ class _Cells:
             if column < 0 or (column in places and not (number_only and places[column] in texts))
         ]
 
-    def remarked(self) -> bool:
-        """Tell whether a person wrote a note or a lot, or marked a run failed or a confirmation."""
+    def remarked(self, *, lots: bool) -> bool:
+        """Tell whether a person wrote a note or a lot, or marked a run failed or a confirmation.
+
+        ``lots``: a column ``lot`` is what a plan leaves open, not a factor or response.
+        """
         notes = any(note and not note.startswith(EVEN_SO) for note in self.texts("note"))
         kinds = any(kind in _UNFITTED for kind in self.texts("kind"))
-        return notes or kinds or any(self.texts("lot"))
+        return notes or kinds or (lots and any(self.texts("lot")))
 
     def texts(self, name: str) -> Iterator[str]:
         if name not in self.columns:
