@@ -42,6 +42,7 @@ COMMANDS = (
     "uncertainty",
     "window",
     "robustness",
+    "next",
     "memo",
 )
 HEAVY = ("numpy", "scipy", "pandas", "statsmodels", "cvxpy", "matplotlib", "pydantic", "jinja2")

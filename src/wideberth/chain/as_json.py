@@ -19,7 +19,7 @@ from wideberth.errors import Fault
 from wideberth.fit.records import Model, Models
 from wideberth.operate.records import Robustness, Window
 from wideberth.plan.plan import offence_faults
-from wideberth.plan.records import Plan
+from wideberth.plan.records import Plan, Stage
 from wideberth.study.records import Finding, Study
 from wideberth.surface.records import Shape
 from wideberth.uncertainty.records import Uncertainty
@@ -159,6 +159,11 @@ def plan_json(plan: Plan) -> Json:
         "ways_out": _plain(plan.ways_out),
         "findings": [asdict(finding) for finding in plan.findings],
     }
+
+
+def stage_json(stage: Stage, study: Study) -> Json:
+    """Give the answer of ``next`` after a two-level stage."""
+    return {**_head("next", study), "status": stage.decision.do, **_plain(stage)}
 
 
 def _head(command: str, study: Study) -> Json:

@@ -18,6 +18,7 @@ _COMMANDS = (
     "uncertainty",
     "window",
     "robustness",
+    "next",
     "memo",
 )
 

@@ -39,13 +39,13 @@ _MOST_ALIASES = 8
 @click.option("--core", help="Two-level runs: full, half, quarter, eighth or sixteenth.")
 @click.option("--axial", help="rotatable, spherical, face, orthogonal-blocks, or a coded distance.")
 @click.option("--shrink", help="Draw the whole design in toward its centre, like 0.8.")
-@click.option("--centre-runs", help="Centre runs in each block; 4,2: two-level and axial block.")
+@click.option("--centre-runs", help="Centre runs in each block; 4+2: two-level and axial block.")
 @click.option("--blocks", help="Number of blocks.")
 @click.option("--replicates", help="How often each run but the centre runs is made.")
 @click.option("--runs", help="Size of an optimal plan.")
 @click.option("--criterion", help="What an optimal plan is best in: D (coefficients) or I.")
 @click.option("--order", help="Order of the model of an optimal plan: 1 or 2.")
-@click.option("--beside", help="Show a second plan beside it: KEY=VALUE;KEY=VALUE;...")
+@click.option("--beside", help="Show a second plan beside it: KEY=VALUE,KEY=VALUE,...")
 @click.option(
     "--append", is_flag=True, help="Add the runs below those of the sheet, as new blocks."
 )
@@ -71,13 +71,11 @@ def command(
 
     Example: wideberth plan my-study --axial face
     """
-    from wideberth.chain.as_json import dumps, plan_json
-    from wideberth.chain.plan_files import write_plan
     from wideberth.plan.plan import plan_runs
     from wideberth.study.plan_statement import goes_with
     from wideberth.study.reading import read_draft
 
-    overrides = {key: _value(text) for key in _KEYS if (text := stated[key]) is not None}
+    overrides = {key: read_value(text) for key in _KEYS if (text := stated[key]) is not None}
     plan = plan_runs(read_draft(study_dir, overrides), append=append, seed=seed)
     other = None
     if beside is not None:
@@ -87,6 +85,31 @@ def command(
         changed = read_draft(study_dir, common | pairs)
         other = plan_runs(changed, append=append, seed=seed)
     writes = not show and (even_so or not plan.offending)
+    return show_plan(
+        plan,
+        other,
+        append=append,
+        even_so=even_so,
+        writes=writes,
+        figure=figure,
+        as_json=as_json,
+    )
+
+
+def show_plan(
+    plan: Plan,
+    other: Plan | None = None,
+    *,
+    append: bool,
+    even_so: bool,
+    writes: bool,
+    figure: bool = False,
+    as_json: bool,
+) -> int:
+    """Write a plan where that is asked for, print it, and give the exit code."""
+    from wideberth.chain.as_json import dumps, plan_json
+    from wideberth.chain.plan_files import write_plan
+
     files = {"plan.svg": _figure(plan, other)} if writes and figure else {}
     paths = write_plan(plan, append=append, even_so=even_so, beside=files) if writes else ()
     if as_json:
@@ -98,14 +121,14 @@ def command(
         _print(plan, other, even_so=even_so)
         for path in paths:
             click.echo(f"wrote {path}")
-        if plan.offending and not even_so:
+        if not paths:
             click.echo("Nothing was written.")
     return 2 if plan.offending and not even_so else 0
 
 
-def _value(text: str) -> object:
+def read_value(text: str) -> object:
     """Read an option as a whole number, a number, two whole numbers, or a word."""
-    parts = [part.strip() for part in text.split(",")]
+    parts = [part.strip() for part in text.split("+")]
     if len(parts) == 2 and all(part.isdigit() for part in parts):
         return [int(part) for part in parts]
     for kind in (int, float):
@@ -120,11 +143,11 @@ def _pairs(text: str) -> dict[str, object]:
     from wideberth.errors import refusal
 
     pairs: dict[str, object] = {}
-    for part in text.split(";"):
+    for part in text.split(","):
         key, equals, value = (piece.strip() for piece in part.partition("="))
         if not equals or not value:
-            raise refusal(f"'{part}' is no KEY=VALUE", "--beside", "write axial=face;blocks=2")
-        pairs[key.replace("-", "_")] = _value(value)
+            raise refusal(f"'{part}' is no KEY=VALUE", "--beside", "write axial=face,blocks=2")
+        pairs[key.replace("-", "_")] = read_value(value)
     return pairs
 
 

@@ -26,11 +26,13 @@ from wideberth.plan.two_level import (
     smallest_core,
     two_level_core,
 )
+from wideberth.study.coding import to_coded
 from wideberth.study.records import CategoricalFactor, FloatArray, IntArray, PlanChoice, Study
 
 _MOST_FACTORS = 8
 _WHERE = "study.toml, plan"
 _ENOUGH_CENTRE = 5
+_NEAR = 0.2
 
 
 def build_design(study: Study, choice: PlanChoice) -> Design:
@@ -66,6 +68,45 @@ def _shrunk(design: Design, shrink: float) -> Design:
     if shrink == 1.0:
         return design
     return _with(design, coded=design.coded * shrink)
+
+
+def axial_block(study: Study, choice: PlanChoice) -> Design:
+    """Lay out the axial runs that complete the two-level runs of a study's sheet, as one block.
+
+    Raises
+    ------
+    InputError
+        When the sheet holds no two-level runs, or axial runs already.
+    """
+    k, runs = len(study.numeric), study.runs
+    x = np.abs(to_coded(study.numeric, runs.numeric_actual[runs.fitted]))
+    corner, centre = (x > 1 - _NEAR).all(axis=1), (x < _NEAR).all(axis=1)
+    if k == 0 or not corner.any() or not (corner | centre).all():
+        what = "the sheet does not hold two-level and centre runs alone"
+        mend = "axial runs complete a two-level stage: plan one with design = 'two-level' first"
+        raise InputError([Fault(what, runs.file, mend)])
+    said: list[str] = []
+    combinations = max(1, len(np.unique(runs.levels[runs.fitted], axis=0)))
+    count = choice.centre_runs[1] if choice.centre_runs else _default_centre(2, said)
+    axial = axial_distance(
+        choice.axial,
+        k,
+        n_core=int(corner.sum()),
+        n_axial=2 * k * combinations,
+        centre_core=int(centre.sum()),
+        centre_axial=count * combinations,
+    )
+    axial *= choice.shrink
+    said.append(
+        f"The axial distance is {axial:.3f} coded units for the {int(corner.sum())} two-level and"
+        f" {int(centre.sum())} centre runs of the sheet."
+    )
+    parts = [(_arms(k, axial), "axial", 0), (np.zeros((count, k)), "centre", 0)]
+    return _per_level(_stacked(parts, axial, None, said), study.categorical)
+
+
+def _arms(k: int, axial: float) -> FloatArray:
+    return np.concatenate([axial * np.eye(k)[j] * np.array([[-1.0], [1.0]]) for j in range(k)])
 
 
 def _with(design: Design, **changes: FloatArray) -> Design:
@@ -199,7 +240,7 @@ def _central_composite(k: int, choice: PlanChoice) -> Design:
         centre_core=count * parts_of_core,
         centre_axial=count_axial if choice.blocks > 1 else None,
     )
-    arms = np.concatenate([axial * np.eye(k)[j] * np.array([[-1.0], [1.0]]) for j in range(k)])
+    arms = _arms(k, axial)
     parts: list[tuple[FloatArray, str, int]] = []
     for b in range(parts_of_core):
         parts.append((np.repeat(corners[block == b], choice.replicates, axis=0), "factorial", b))

@@ -98,8 +98,8 @@ def planned_model(study: Study, order: int) -> PlannedModel:
     """Find what the runs of a study can estimate, up to a model of this order."""
     rows = np.arange(len(study.runs.rows))
     k = len(study.numeric)
-    terms = model_terms(study, order, study.runs.block)
-    aliases: list[str] = []
+    terms = every = model_terms(study, order, study.runs.block)
+    aliases: list[set[str]] = []
     while True:
         matrix = model_matrix(study, terms, rows)
         kept = independent_columns(matrix)
@@ -109,7 +109,7 @@ def planned_model(study: Study, order: int) -> PlannedModel:
         for column in sorted(set(range(len(terms))) - set(kept)):
             group = [column, *aliased_with(matrix, column, [i for i in kept if i < column])]
             degrees = {i: degree(terms[i], k) for i in group}
-            aliases.append(" = ".join(terms[i].name for i in sorted(group)))
+            aliases = _joined(aliases, {terms[i].name for i in group})
             dropped |= {i for i in group if degrees[i] == max(degrees.values())}
         terms = tuple(term for i, term in enumerate(terms) if i not in dropped)
     q_factor, r_factor = np.linalg.qr(matrix)
@@ -122,10 +122,19 @@ def planned_model(study: Study, order: int) -> PlannedModel:
         matrix=matrix,
         covariance=inverse @ inverse.T,
         leverage=np.minimum((q_factor**2).sum(axis=1), 1.0),
-        aliases=tuple(aliases),
+        aliases=tuple(
+            ", ".join(term.name for term in every if term.name in names) for names in aliases
+        ),
         df_lack=n - len(terms) - df_pure,
         df_pure=df_pure,
     )
+
+
+def _joined(sets: list[set[str]], new: set[str]) -> list[set[str]]:
+    """Add a set of terms, joined with those that it shares a term with."""
+    apart = [names for names in sets if not names & new]
+    touching = [names for names in sets if names & new]
+    return [*apart, new.union(*touching)]
 
 
 def level_combinations(study: Study) -> list[tuple[int, ...]]:

@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 import numpy as np
 
 from wideberth.errors import Fault, InputError, refusal
-from wideberth.plan.designs import build_design
+from wideberth.plan.designs import axial_block, build_design
 from wideberth.plan.model import PlannedModel, planned_model, with_runs
 from wideberth.plan.optimal import optimal_design
 from wideberth.plan.quality import even_settings, plan_region, quality, region_variance
@@ -41,7 +42,9 @@ class _Laid:
         return self.choice.order if self.choice.design == "optimal" else 2
 
 
-def plan_runs(study: Study, *, append: bool = False, seed: int | None = None) -> Plan:
+def plan_runs(
+    study: Study, *, append: bool = False, axial_only: bool = False, seed: int | None = None
+) -> Plan:
     """Plan the runs that ``[plan]`` states and check every one of them.
 
     Parameters
@@ -51,6 +54,9 @@ def plan_runs(study: Study, *, append: bool = False, seed: int | None = None) ->
     append : bool
         Keep the runs that the sheet holds and add the new ones as new blocks; otherwise the sheet
         is planned anew, which is refused when it holds results.
+    axial_only : bool
+        Plan only the block of axial runs that makes the two-level runs of the sheet a central
+        composite design; goes with ``append``.
     seed : int, optional
         Instead of the study's.
 
@@ -70,7 +76,8 @@ def plan_runs(study: Study, *, append: bool = False, seed: int | None = None) ->
     seed = study.seed if seed is None else seed
     earlier = earlier_models(study)
     _check_blocks(study)
-    laid = _lay_out(study, study.plan, earlier, seed)
+    builder = _Builder(study, earlier, seed, axial_only)
+    laid = builder.lay_out(study.plan)
     refused = any(laid.offences)
     model = planned_model(laid.fitted, laid.order)
     return Plan(
@@ -83,7 +90,7 @@ def plan_runs(study: Study, *, append: bool = False, seed: int | None = None) ->
         fitted=laid.fitted,
         quality=quality(model, seed=seed),
         rounding=_rounding(study, laid, model),
-        ways_out=_ways_out(study, laid, model, earlier, seed) if refused else (),
+        ways_out=_ways_out(builder, laid, model) if refused else (),
         certificate=laid.certificate,
         findings=(
             *judging_findings(earlier, laid.actual),
@@ -106,20 +113,32 @@ def _check_blocks(study: Study) -> None:
         raise InputError([Fault(what, study.runs.file, mend)])
 
 
-def _lay_out(study: Study, choice: PlanChoice, earlier: Earlier | None, seed: int) -> _Laid:
-    names = _block_names(study, choice.blocks)
-    certificate = None
-    if choice.design == "optimal":
-        design, certificate = optimal_design(study, choice, earlier, names, seed=seed)
-    else:
-        design = build_design(study, choice)
-    actual = settable(study.numeric, design.coded)
-    _check_steps(study, design, actual)
-    fitted = with_runs(
-        study, actual, design.levels, tuple(names[b] for b in design.block), design.kind
-    )
-    reasons = offences(study, earlier, actual, design.levels)
-    return _Laid(choice, design, certificate, names, actual, reasons, fitted)
+@dataclass(frozen=True, slots=True, eq=False)
+class _Builder:
+    """Lays out one choice after another for the same study."""
+
+    study: Study
+    earlier: Earlier | None
+    seed: int
+    axial_only: bool
+
+    def lay_out(self, choice: PlanChoice) -> _Laid:
+        study = self.study
+        names = _block_names(study, choice.blocks)
+        certificate = None
+        if choice.design == "optimal":
+            design, certificate = optimal_design(study, choice, self.earlier, names, seed=self.seed)
+        elif self.axial_only:
+            design = axial_block(study, choice)
+        else:
+            design = build_design(study, choice)
+        actual = settable(study.numeric, design.coded)
+        _check_steps(study, design, actual)
+        fitted = with_runs(
+            study, actual, design.levels, tuple(names[b] for b in design.block), design.kind
+        )
+        reasons = offences(study, self.earlier, actual, design.levels)
+        return _Laid(choice, design, certificate, names, actual, reasons, fitted)
 
 
 def _block_names(study: Study, n: int) -> tuple[str, ...]:
@@ -231,16 +250,15 @@ def _mean_variance(stated: PlannedModel, other: PlannedModel) -> float | None:
     return float(region_variance(other, even_settings(region)).mean())
 
 
-def _ways_out(
-    study: Study, laid: _Laid, model: PlannedModel, earlier: Earlier | None, seed: int
-) -> tuple[WayOut, ...]:
+def _ways_out(builder: _Builder, laid: _Laid, model: PlannedModel) -> tuple[WayOut, ...]:
     """Try the face distance, a smaller design and an optimal plan; give those that keep inside."""
-    choice, ways = laid.choice, []
+    choice = laid.choice
+    ways: list[WayOut] = []
     own = _mean_variance(model, model)
 
     def offer(what: str, options: str, other: PlanChoice) -> bool:
         try:
-            found = _lay_out(study, other, earlier, seed)
+            found = builder.lay_out(other)
         except InputError:
             return False
         if any(found.offences):
@@ -251,7 +269,11 @@ def _ways_out(
         return True
 
     if choice.design == "central composite" and choice.axial != "face":
-        offer("axial runs on the faces", "--axial face", replace(choice, axial="face"))
+        option = "--distance face" if builder.axial_only else "--axial face"
+        offer("axial runs on the faces", option, replace(choice, axial="face"))
+    if builder.axial_only:
+        _nearer_axial(choice, laid, offer)
+        return tuple(ways)
     if choice.design != "optimal":
         for shrink in _SHRINKS[choice.shrink > _SHRINKS].tolist():
             what = f"the whole design drawn in to {shrink:g} of its size"
@@ -264,6 +286,16 @@ def _ways_out(
             PlanChoice(design="optimal", runs=n, blocks=choice.blocks, hold=choice.hold),
         )
     return tuple(ways)
+
+
+def _nearer_axial(
+    choice: PlanChoice, laid: _Laid, offer: Callable[[str, str, PlanChoice], bool]
+) -> None:
+    """Try axial runs nearer to the centre, a twentieth of a coded unit at a time."""
+    distance = laid.design.axial_distance or 1.0
+    for nearer in np.arange(np.ceil(distance * 20 - 1) / 20, 0.45, -0.05).round(2).tolist():
+        if offer("axial runs nearer", f"--distance {nearer:g}", replace(choice, axial=nearer)):
+            return
 
 
 def _findings(study: Study, laid: _Laid, model: PlannedModel) -> list[Finding]:

@@ -247,3 +247,92 @@ class Plan:
     def offending(self) -> tuple[PlannedRun, ...]:
         """The runs that must not be made."""
         return tuple(run for run in self.runs if run.offences)
+
+
+@dataclass(frozen=True, slots=True)
+class Effect:
+    """What a term changes from low to high, with its 95 % interval and two-sided p."""
+
+    term: str
+    change: float
+    interval: tuple[float, float] | None
+    p: float | None
+
+
+@dataclass(frozen=True, slots=True)
+class Curvature:
+    """Two-level runs less centre runs, tested against pure error.
+
+    ``f`` has 1 and ``df`` degrees of freedom. ``detectable``: the smallest curvature that the test
+    finds in 80 of 100, in the response's unit. ``None`` without pure error.
+    """
+
+    difference: float
+    interval: tuple[float, float] | None
+    f: float | None
+    p: float | None
+    df: int
+    detectable: float | None
+
+
+@dataclass(frozen=True, slots=True)
+class StageResponse:
+    """One response of a two-level stage.
+
+    ``slopes`` are coded, one for each numeric factor; ``s`` is the residual standard deviation with
+    the curvature in the model; ``curvature`` is ``None`` where the runs do not show it.
+    """
+
+    response: str
+    unit: str
+    n_runs: int
+    s: float | None
+    df: int
+    mean: float
+    slopes: tuple[float, ...]
+    effects: tuple[Effect, ...]
+    curvature: Curvature | None
+    aliases: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class PathStep:
+    """One run along the path: where, and what the first-order model expects."""
+
+    step: int
+    setting: Setting
+    coded: tuple[float, ...]
+    expected: float
+
+
+@dataclass(frozen=True, slots=True)
+class Path:
+    """The path of steepest ascent (or descent) of one response.
+
+    ``direction`` is coded, the steepest factor moving by 1 a step; ``stopped`` says why the path
+    ends, ``rule`` when to stop running it.
+    """
+
+    response: str
+    unit: str
+    direction: tuple[float, ...]
+    steps: tuple[PathStep, ...]
+    stopped: str
+    rule: str
+
+
+@dataclass(frozen=True, slots=True)
+class Decision:
+    """What to do after a stage: follow the ``path``, add ``axial`` runs, or ``repeat``."""
+
+    do: Literal["path", "axial", "repeat"]
+    why: str
+
+
+@dataclass(frozen=True, slots=True)
+class Stage:
+    """A finished two-level stage, judged."""
+
+    responses: tuple[StageResponse, ...]
+    decision: Decision
+    path: Path | None

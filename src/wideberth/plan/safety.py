@@ -198,4 +198,15 @@ def judging_findings(earlier: Earlier | None, actual: FloatArray) -> list[Findin
             f" {names} were judged by extrapolation. Make these runs last, watched, one at a time."
         )
         found.append(Finding("look", text))
+        straight = [m.response for m, _ in earlier.held if not m.exact and not _has_squares(m)]
+        if straight:
+            text = (
+                f"The earlier model of {', '.join(straight)} has no squares: beyond low and high it"
+                " cannot know of curvature, and may be too kind."
+            )
+            found.append(Finding("look", text))
     return found
+
+
+def _has_squares(model: Model) -> bool:
+    return any(term.name.endswith("^2") for term in model.terms)

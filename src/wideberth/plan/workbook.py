@@ -69,7 +69,7 @@ def _locked_names(plan: Plan) -> set[str]:
 
 
 def _write_cells(book: Any, sheet: Any, plan: Plan, columns: list[str]) -> None:
-    line = {"border": 1, "border_color": _LINE, "valign": "vcenter"}
+    line = {"border": 1, "border_color": _LINE, "valign": "vcenter", "align": "center"}
     head = book.add_format({**line, "bold": True, "text_wrap": True, "bg_color": _PLANNED})
     locked = book.add_format({**line, "bg_color": _PLANNED})
     open_cell = book.add_format({**line, "locked": False})
@@ -77,6 +77,8 @@ def _write_cells(book: Any, sheet: Any, plan: Plan, columns: list[str]) -> None:
     for column, heading in enumerate(columns):
         sheet.write_string(0, column, heading, head)
     for row, run in enumerate(plan.runs, start=1):
+        # high enough to write in by hand
+        sheet.set_row(row, 20)
         content = cells(run)
         for column, heading in enumerate(columns):
             name = header_name(heading)

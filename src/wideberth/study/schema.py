@@ -224,6 +224,9 @@ def _fault(detail: Any, path: KeyPath, lines: Mapping[KeyPath, int]) -> Fault:
         return Fault(f"unknown key '{key}'", where, mend)
     if kind == "missing":
         return Fault(f"key '{key}' is missing", where, f"state '{key}'")
+    shown = str(value) if not isinstance(value, str) else f"'{value}'"
+    if path in _SEVERAL:
+        return Fault(f"'{key}' is {shown[:60]}", where, _SEVERAL[path])
     allowed = _ALLOWED.get(kind, "see the study reference for what may stand here")
     if kind == "literal_error":
         allowed = f"use {limits.get('expected', 'one of the known words')}"
@@ -234,7 +237,6 @@ def _fault(detail: Any, path: KeyPath, lines: Mapping[KeyPath, int]) -> Fault:
     elif kind in ("too_short", "too_long"):
         count = limits.get("min_length", limits.get("max_length"))
         allowed = f"give {'at least' if kind == 'too_short' else 'at most'} {count} items"
-    shown = str(value) if not isinstance(value, str) else f"'{value}'"
     return Fault(f"'{key}' is {shown[:60]}", where, allowed)
 
 
@@ -243,6 +245,13 @@ _BOUND_WORDS = {
     "greater_than_equal": ("ge", "at least"),
     "less_than": ("lt", "below"),
     "less_than_equal": ("le", "at most"),
+}
+# keys that take values of different kinds
+_SEVERAL: dict[KeyPath, str] = {
+    ("plan", "axial"): "use 'rotatable', 'spherical', 'face', 'orthogonal-blocks' or a number"
+    " above 0",
+    ("plan", "centre_runs"): "give a whole number, or two for the two-level blocks and the axial"
+    " block",
 }
 _ALLOWED = {
     "float_type": "give a number without quotes",
