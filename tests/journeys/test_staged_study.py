@@ -54,7 +54,7 @@ def test_from_an_empty_folder_through_two_stages(emulsion):
     assert [stage["plan"]["design"] for stage in stages] == ["two-level", "central composite"]
     assert _run("check", emulsion).exit_code == 0
     shutil.copy(STUDIES / "emulsion" / "both-stages.csv", emulsion / "runs.csv")
-    assert "beyond a two-level stage" in _run("next", emulsion).output
+    assert "two-level stage, or go beyond one" in _run("next", emulsion).output
     assert _run("fit", emulsion).exit_code == 0
 
 
@@ -154,6 +154,17 @@ def test_the_table_is_checked_with_its_line(emulsion, line, said):
     assert done.exit_code == 2
     assert said in done.output
     assert "study.toml line " in done.output
+
+
+def test_a_sheet_of_other_factors_can_be_moved_away(emulsion):
+    assert _run("plan", emulsion).exit_code == 0
+    text = (emulsion / "study.toml").read_text(encoding="utf-8")
+    (emulsion / "study.toml").write_text(
+        text.replace("[factors.oil]", "[factors.fat]").replace("oil = 9.6", "fat = 9.6")
+    )
+    done = _run("plan", emulsion)
+    assert done.exit_code == 2
+    assert "move it away to plan a new one" in done.output
 
 
 def test_the_templates_sheet_gives_way_to_a_plan(tmp_path):

@@ -88,7 +88,14 @@ def test_without_repeated_centre_runs_curvature_cannot_be_tested():
     stage = _stage(3 * x[:, 0], x)
     assert stage.responses[0].curvature.p is None
     assert stage.decision.do == "repeat"
-    assert "repeat the centre runs" in stage.decision.why
+    assert "add three to five centre runs" in stage.decision.why
+
+
+def test_a_stage_without_centre_runs_still_ranks_its_effects():
+    stage = _stage(3 * X[:8, 0] + _noise(1)[:8], X[:8], orders={"y": 1})
+    assert stage.responses[0].curvature is None
+    assert stage.responses[0].effects[0].term == "f0"
+    assert stage.decision.do == "repeat"
 
 
 def test_effects_have_the_intervals_of_plain_least_squares():
@@ -136,7 +143,7 @@ def test_blocks_do_not_pass_for_curvature():
 
 def test_other_runs_are_no_two_level_stage():
     x = np.concatenate([X, [[1.5, 0, 0]]])
-    with pytest.raises(InputError, match="not a two-level stage with centre runs"):
+    with pytest.raises(InputError, match="not a two-level stage, or go beyond one"):
         _stage(x[:, 0], x)
 
 

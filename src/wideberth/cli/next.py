@@ -75,6 +75,7 @@ def command(
 
 def _print(stage: Stage, study: Study) -> None:
     from wideberth.report.numbers import named
+    from wideberth.report.plan_rows import PLAN_CAUTION
     from wideberth.report.stage_rows import curvature_words, effect_row, path_row
 
     for one in stage.responses:
@@ -93,5 +94,6 @@ def _print(stage: Stage, study: Study) -> None:
         header = ["step", *(named(f.name, f.unit) for f in study.factors), f"{path.response} about"]
         print_table(header, [path_row(study, path, step) for step in path.steps])
         click.echo(f"  {path.stopped}")
+        click.echo(f"Cautions: {PLAN_CAUTION}")
     if stage.decision.do == "axial":
         click.echo("Add them with: wideberth next --axial")

@@ -160,7 +160,13 @@ def _figure(plan: Plan, other: Plan | None) -> bytes:
 
 def _print(plan: Plan, other: Plan | None, *, even_so: bool) -> None:
     from wideberth.report.numbers import named
-    from wideberth.report.plan_rows import quality_rows, run_row, side_by_side, way_out_row
+    from wideberth.report.plan_rows import (
+        PLAN_CAUTION,
+        quality_rows,
+        run_row,
+        side_by_side,
+        way_out_row,
+    )
 
     study = plan.study
     click.echo(f"{study.title}: {len(plan.runs)} runs, {plan.choice.design}, seed {plan.seed}")
@@ -185,6 +191,7 @@ def _print(plan: Plan, other: Plan | None, *, even_so: bool) -> None:
         if len(plan.quality.aliases) > _MOST_ALIASES:
             click.echo(f"  and {len(plan.quality.aliases) - _MOST_ALIASES} more; see --json")
     print_findings(plan.findings)
+    click.echo(f"Cautions: {PLAN_CAUTION}")
 
 
 def _print_ways_out(plan: Plan, rows: list[tuple[str, ...]]) -> None:

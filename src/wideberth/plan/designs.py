@@ -17,6 +17,7 @@ import numpy as np
 
 from wideberth.errors import Fault, InputError
 from wideberth.plan.box_behnken import BLOCKS, CENTRE_RUNS, box_behnken
+from wideberth.plan.quality import centre_and_corners
 from wideberth.plan.records import Core, Design
 from wideberth.plan.two_level import (
     ENOUGH,
@@ -26,13 +27,11 @@ from wideberth.plan.two_level import (
     smallest_core,
     two_level_core,
 )
-from wideberth.study.coding import to_coded
 from wideberth.study.records import CategoricalFactor, FloatArray, IntArray, PlanChoice, Study
 
 _MOST_FACTORS = 8
 _WHERE = "study.toml, plan"
 _ENOUGH_CENTRE = 5
-_NEAR = 0.2
 
 
 def build_design(study: Study, choice: PlanChoice) -> Design:
@@ -79,8 +78,7 @@ def axial_block(study: Study, choice: PlanChoice) -> Design:
         When the sheet holds no two-level runs, or axial runs already.
     """
     k, runs = len(study.numeric), study.runs
-    x = np.abs(to_coded(study.numeric, runs.numeric_actual[runs.fitted]))
-    corner, centre = (x > 1 - _NEAR).all(axis=1), (x < _NEAR).all(axis=1)
+    centre, corner = (places[runs.fitted] for places in centre_and_corners(study))
     if k == 0 or not corner.any() or not (corner | centre).all():
         what = "the sheet does not hold two-level and centre runs alone"
         mend = "axial runs complete a two-level stage: plan one with design = 'two-level' first"

@@ -20,7 +20,8 @@ from wideberth.study.records import FloatArray, IntArray, PlanChoice, Study
 
 _SPARE = 5
 _CENTRE = 3
-_LARGE = 30_000
+_WORK = 300_000
+_STARTS = (2, 12)
 _WHERE = "study.toml, plan.runs"
 
 
@@ -55,12 +56,13 @@ def optimal_design(
     rows, old = model.matrix[n_old:], model.matrix[:n_old]
     said: list[str] = []
     centre = _centre(study, earlier, actual)
-    sizes, per_block = _sizes(choice, len(model.terms), n_old, len(blocks), said)
+    per_block = _CENTRE if study.numeric else 0
+    sizes, per_block = _sizes(choice, len(model.terms), n_old, len(blocks), per_block, said)
     middles = [b * m + centre for b in range(len(blocks)) for _ in range(per_block)]
     fixed = old.T @ old + rows[middles].T @ rows[middles]
     group = np.repeat(np.arange(len(blocks)), m)
     task = Task(rows, group, sizes, fixed, _moments(model, study, earlier))
-    n_starts = 8 if rows.size > _LARGE else 12
+    n_starts = int(np.clip(_WORK / rows.size, *_STARTS))
     chosen, score = best_rows(task, choice.criterion, seed=seed, n_starts=n_starts)
     if not np.isfinite(score):
         raise _too_few(sum(sizes) + len(middles), len(model.terms), n_old)
@@ -83,7 +85,7 @@ def optimal_design(
 
 
 def _sizes(
-    choice: PlanChoice, n_terms: int, n_old: int, n_blocks: int, said: list[str]
+    choice: PlanChoice, n_terms: int, n_old: int, n_blocks: int, centre: int, said: list[str]
 ) -> tuple[tuple[int, ...], int]:
     """Give the runs to choose in each block, and the centre runs of each."""
     runs = choice.runs
@@ -99,7 +101,7 @@ def _sizes(
         per_block = choice.centre_runs[0]
     else:
         spare = runs + n_old - n_terms
-        per_block = ceil(_CENTRE / n_blocks) if spare >= _CENTRE + 1 and runs > 2 * _CENTRE else 0
+        per_block = ceil(centre / n_blocks) if spare > centre and runs > 2 * centre else 0
         if per_block:
             said.append(
                 f"{per_block} of the runs{' of each block' if n_blocks > 1 else ''} stand at the"

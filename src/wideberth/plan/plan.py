@@ -279,12 +279,18 @@ def _ways_out(builder: _Builder, laid: _Laid, model: PlannedModel) -> tuple[WayO
             what = f"the whole design drawn in to {shrink:g} of its size"
             if offer(what, f"--shrink {shrink:g}", replace(choice, shrink=shrink)):
                 break
-        n = len(laid.design.coded)
-        offer(
-            "an optimal plan of as many runs for what may be run",
-            f"--design optimal --runs {n}",
-            PlanChoice(design="optimal", runs=n, blocks=choice.blocks, hold=choice.hold),
+        n, centre = len(laid.design.coded), choice.centre_runs
+        optimal = PlanChoice(
+            design="optimal",
+            runs=n,
+            blocks=choice.blocks,
+            centre_runs=centre if centre and centre[0] == centre[1] else None,
+            hold=choice.hold,
         )
+        what = "an optimal plan of as many runs for what may be run"
+        option = f"--design optimal --runs {n}"
+        if not offer(what, option, optimal):
+            offer(f"{what}, first order", f"{option} --order 1", replace(optimal, order=1))
     return tuple(ways)
 
 

@@ -25,7 +25,7 @@ from wideberth.fit.records import terms_map
 from wideberth.plan.model import PlannedModel, level_combinations
 from wideberth.plan.records import Detectable, Provable, Quality, Spheres
 from wideberth.study.coding import to_coded
-from wideberth.study.records import FloatArray, RegionChoice, Study
+from wideberth.study.records import BoolArray, FloatArray, RegionChoice, Study
 from wideberth.surface.explored import explored_region
 
 _N_REGION = 2000
@@ -35,6 +35,7 @@ _N_RADII = 21
 _POWER, _LEVEL = 0.8, 0.05
 _N_LEVELS = 200
 _FAR = 5.0
+_NEAR = 0.2
 
 
 def quality(model: PlannedModel, *, seed: int) -> Quality:
@@ -69,7 +70,9 @@ def plan_region(study: Study) -> Region | None:
         return None
     stated = replace(study, region=RegionChoice())
     try:
-        return search_region(stated, explored_region(stated))
+        # on the way to finding a region empty the search may overflow
+        with np.errstate(over="ignore", invalid="ignore"):
+            return search_region(stated, explored_region(stated))
     except RefusedError:
         return None
 
@@ -214,13 +217,19 @@ def curvature_variance(model: PlannedModel) -> float | None:
 
 
 def curvature_column(study: Study) -> FloatArray | None:
-    """Tell centre runs (0) from two-level runs (1); ``None`` where other runs are there too."""
-    if not study.numeric:
-        return None
+    """Tell centre runs (0) from two-level runs (1); ``None`` without both, or with others."""
+    centre, corner = centre_and_corners(study)
+    both = centre.any() and corner.any() and (centre | corner).all()
+    return np.where(centre, 0.0, 1.0) if both else None
+
+
+def centre_and_corners(study: Study) -> tuple[BoolArray, BoolArray]:
+    """Tell which runs stand at the centre and which at low or high in every factor; (n,) each.
+
+    Settings as run may be off a little, so a fifth of the way counts as there.
+    """
     x = np.abs(to_coded(study.numeric, study.runs.numeric_actual))
-    centre = (x < 0.2).all(axis=1)
-    corner = (x > 0.8).all(axis=1)
-    return np.where(centre, 0.0, 1.0) if (centre | corner).all() and centre.any() else None
+    return np.asarray((x < _NEAR).all(axis=1)), np.asarray((x > 1 - _NEAR).all(axis=1))
 
 
 def _provable(

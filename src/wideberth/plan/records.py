@@ -210,11 +210,6 @@ class Quality:
     provable: tuple[Provable, ...]
     block_coupling: float
 
-    @property
-    def rotatable(self) -> bool:
-        """True when the prediction variance depends on the distance from the centre alone."""
-        return self.uneven is not None and self.uneven < 1e-9
-
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Plan:

@@ -20,10 +20,15 @@ from scipy.special import fdtrc, stdtr, stdtrit
 
 from wideberth.errors import refusal
 from wideberth.fit.lack_of_fit import replicate_groups
-from wideberth.fit.least_squares import LeastSquares, independent_columns, least_squares
+from wideberth.fit.least_squares import (
+    LeastSquares,
+    independent_columns,
+    is_noise_free,
+    least_squares,
+)
 from wideberth.plan.model import PlannedModel, planned_model
 from wideberth.plan.path import steepest_path
-from wideberth.plan.quality import curvature_column, detectable_change
+from wideberth.plan.quality import centre_and_corners, curvature_column, detectable_change
 from wideberth.plan.records import Curvature, Decision, Effect, Path, Stage, StageResponse
 from wideberth.plan.safety import earlier_models
 from wideberth.study.records import BoolArray, FloatArray, Goal, Response, Study
@@ -48,9 +53,10 @@ def finished_stage(study: Study, *, response: str | None = None) -> Stage:
         When the runs are no two-level stage with centre runs, or nothing was measured.
     """
     runs = _fitted_rows(study)
-    if not study.numeric or curvature_column(runs) is None:
+    centre, corner = centre_and_corners(runs)
+    if not study.numeric or not corner.any() or not (centre | corner).all():
         raise refusal(
-            "the runs are not a two-level stage with centre runs, or are beyond a two-level stage",
+            "the runs are not a two-level stage, or go beyond one",
             study.runs.file,
             "plan one with design = 'two-level'; with axial runs there, use fit and recommend",
         )
@@ -96,7 +102,7 @@ def _judged(study: Study, column: int, response: Response) -> StageResponse:
     matrix = model.matrix if bend is None else np.column_stack([model.matrix, bend])
     seen = bend is not None and len(independent_columns(matrix)) == matrix.shape[1]
     fit = least_squares(matrix if seen else model.matrix, y)
-    s = float(np.sqrt(fit.rss / fit.df)) if fit.df > 0 else None
+    s = None if fit.df == 0 else 0.0 if is_noise_free(fit, y) else float(np.sqrt(fit.rss / fit.df))
     return StageResponse(
         response=response.name,
         unit=response.unit,
@@ -195,8 +201,8 @@ def _decision(study: Study, judged: tuple[StageResponse, ...], path: Path | None
     if untested:
         return Decision(
             "repeat",
-            f"Curvature of {', '.join(untested)} cannot be tested: repeat the centre runs, so that"
-            " there is pure error to hold it against.",
+            f"Curvature of {', '.join(untested)} cannot be tested: add three to five centre runs,"
+            " so that there is pure error to hold it against.",
         )
     shown = [one for one in bent if one.curvature and (one.curvature.p or 0.0) < _LEVEL]
     if shown:

@@ -10,6 +10,11 @@ from wideberth.report.numbers import format_setting, format_value, with_unit
 from wideberth.study.records import Study
 
 _DIGITS = 0.1
+PLAN_CAUTION = (
+    "A plan is no hazard review: it knows the ranges, constraints and limits that were stated, and"
+    " nothing else. Each run follows the site's safety procedure, local codes and licensed"
+    " practice; changes of scale are confirmed first."
+)
 
 
 def quality_rows(plan: Plan) -> list[tuple[str, str]]:

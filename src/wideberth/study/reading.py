@@ -70,6 +70,9 @@ def _read(folder: Path, overrides: Mapping[str, object], *, draft: bool) -> Stud
     factors, responses = statement.factors(), statement.responses()
     sheet = read_sheet(folder, tables.study.runs, factors, responses, draft=draft)
     late = [*sheet.faults, *(() if draft else statement.block_faults(sheet))]
+    if draft and sheet.faults:
+        what = "the sheet that is there does not fit the study"
+        late.append(Fault(what, tables.study.runs, "mend it, or move it away to plan a new one"))
     if late or sheet.runs is None:
         raise InputError(late)
     hashes = {STUDY_FILE: hashlib.sha256(raw).hexdigest(), sheet.runs.file: sheet.sha256}
@@ -118,6 +121,8 @@ def _override(data: dict[str, Any], overrides: Mapping[str, object]) -> None:
     kept = {
         key: value for key, value in stated.items() if design is None or goes_with(key, str(design))
     }
+    if design not in (None, "central composite") and isinstance(kept.get("centre_runs"), list):
+        del kept["centre_runs"]
     data["plan"] = kept | dict(overrides)
 
 
