@@ -6,6 +6,7 @@ from datetime import date
 
 import numpy as np
 import openpyxl
+import openpyxl.chart
 import pytest
 
 from support.plans import plan_of
@@ -228,6 +229,25 @@ def test_all_faults_of_a_workbook_are_named_by_their_cells(tmp_path):
         assert what in found[cell], (cell, found)
     assert len(caught.value.faults) == 8
     assert any("decimal comma: type it as a number" in fault.mend for fault in caught.value.faults)
+
+
+def test_a_workbook_with_formulas_or_charts_is_not_added_to(tmp_path):
+    (tmp_path / "study.toml").write_text(STATEMENT.format(runs="runs.xlsx"), encoding="utf-8")
+
+    def add(sheet, heads):
+        sheet.cell(3, len(heads) + 1).value = "=SUM(A2:A3)"
+        chart = openpyxl.chart.BarChart()
+        chart.add_data(openpyxl.chart.Reference(sheet, min_col=1, min_row=1, max_row=4))
+        sheet.add_chart(chart)
+
+    _workbook(tmp_path, add)
+    before = (tmp_path / "runs.xlsx").read_bytes()
+    with pytest.raises(InputError) as caught:
+        _write(tmp_path, append=True)
+    said = " ".join(fault.what for fault in caught.value.faults)
+    assert "1 formulas would lose their saved values" in said
+    assert "charts or pictures would be lost" in said
+    assert (tmp_path / "runs.xlsx").read_bytes() == before
 
 
 def test_dates_and_formulas_in_columns_of_your_own_do_no_harm(tmp_path):

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from dataclasses import dataclass
 from math import ceil
 
 import numpy as np
@@ -20,8 +21,8 @@ from wideberth.study.records import FloatArray, IntArray, PlanChoice, Study
 
 _SPARE = 5
 _CENTRE = 3
-_WORK = 300_000
-_STARTS = (2, 12)
+_WORK = 600_000
+_STARTS = (2, 40)
 _WHERE = "study.toml, plan.runs"
 
 
@@ -42,46 +43,81 @@ def optimal_design(
     InputError
         When there are fewer runs than terms, or hardly any setting may be run.
     """
-    actual, levels = candidate_settings(study, earlier)
-    m = len(actual)
-    everything = with_runs(
-        study,
-        np.concatenate([actual] * len(blocks)),
-        np.concatenate([levels] * len(blocks)),
-        tuple(name for name in blocks for _ in range(m)),
-        ("",) * (m * len(blocks)),
-    )
-    model = planned_model(everything, choice.order)
-    n_old = len(everything.runs.rows) - m * len(blocks)
-    rows, old = model.matrix[n_old:], model.matrix[:n_old]
-    said: list[str] = []
-    centre = _centre(study, earlier, actual)
-    per_block = _CENTRE if study.numeric else 0
-    sizes, per_block = _sizes(choice, len(model.terms), n_old, len(blocks), per_block, said)
-    middles = [b * m + centre for b in range(len(blocks)) for _ in range(per_block)]
-    fixed = old.T @ old + rows[middles].T @ rows[middles]
-    group = np.repeat(np.arange(len(blocks)), m)
-    task = Task(rows, group, sizes, fixed, _moments(model, study, earlier))
-    n_starts = int(np.clip(_WORK / rows.size, *_STARTS))
+    task, n_starts, pool = optimal_task(study, choice, earlier, blocks)
     chosen, score = best_rows(task, choice.criterion, seed=seed, n_starts=n_starts)
+    n_chosen, n_terms = len(chosen) + len(pool.middles), task.rows.shape[1]
     if not np.isfinite(score):
-        raise _too_few(sum(sizes) + len(middles), len(model.terms), n_old)
-    places = np.concatenate([np.array(middles, dtype=np.int64), chosen])
-    kinds = ["centre"] * len(middles) + [""] * len(chosen)
-    is_centre = np.array([kind == "centre" for kind in kinds], dtype=np.int64)
-    order = np.lexsort((places, is_centre, group[places]))
-    places = places[order]
-    coded = to_coded(study.numeric, actual)[places % m]
+        raise _too_few(n_chosen, n_terms, pool.n_old)
+    places = np.concatenate([pool.middles, chosen])
+    is_centre = np.arange(n_chosen) < len(pool.middles)
+    order = np.lexsort((places, is_centre, task.group[places]))
+    places, is_centre = places[order], is_centre[order]
+    m = len(pool.coded)
     design = Design(
-        coded=coded,
-        levels=levels[places % m],
-        kind=tuple(kinds[i] for i in order),
-        block=group[places],
+        coded=pool.coded[places % m],
+        levels=pool.levels[places % m],
+        kind=tuple("centre" if flag else "" for flag in is_centre),
+        block=task.group[places],
         n_blocks=len(blocks),
-        said=tuple(said),
+        said=pool.said,
     )
     efficiency = proven_efficiency(task, choice.criterion, score)
-    return design, Certificate(choice.criterion, m, sum(sizes), efficiency, n_starts)
+    return design, Certificate(choice.criterion, m, len(chosen), efficiency, n_starts)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Pool:
+    """The m candidate settings, and the centre runs that are there anyway.
+
+    Attributes
+    ----------
+    coded : ndarray, shape (m, k); levels : ndarray of int, shape (m, c)
+    middles : ndarray of int
+        Rows of the task that the centre runs stand in.
+    n_old : int
+        Runs already made.
+    said : tuple of str
+    """
+
+    coded: FloatArray
+    levels: IntArray
+    middles: IntArray
+    n_old: int
+    said: tuple[str, ...]
+
+
+def optimal_task(
+    study: Study, choice: PlanChoice, earlier: Earlier | None, blocks: tuple[str, ...]
+) -> tuple[Task, int, Pool]:
+    """State what is to be chosen, from how many starts, and out of what."""
+    actual, levels = candidate_settings(study, earlier)
+    m, n_blocks = len(actual), len(blocks)
+    everything = with_runs(
+        study,
+        np.concatenate([actual] * n_blocks),
+        np.concatenate([levels] * n_blocks),
+        tuple(name for name in blocks for _ in range(m)),
+        ("",) * (m * n_blocks),
+    )
+    model = planned_model(everything, choice.order)
+    n_old = len(everything.runs.rows) - m * n_blocks
+    rows, old = model.matrix[n_old:], model.matrix[:n_old]
+    said: list[str] = []
+    centre = _CENTRE if study.numeric else 0
+    sizes, per_block = _sizes(choice, len(model.terms), n_old, n_blocks, centre, said)
+    x, at = even_runnable(study, earlier)
+    coded = to_coded(study.numeric, actual)
+    middle = int(((coded - x.mean(axis=0)) ** 2).sum(axis=1).argmin())
+    middles = np.array([b * m + middle for b in range(n_blocks)] * per_block, dtype=np.int64)
+    task = Task(
+        rows=rows,
+        group=np.repeat(np.arange(n_blocks), m),
+        sizes=sizes,
+        fixed=old.T @ old + rows[middles].T @ rows[middles],
+        moments=_moments(model, x, at),
+    )
+    n_starts = int(np.clip(_WORK / rows.size, *_STARTS))
+    return task, n_starts, Pool(coded, levels, middles, n_old, tuple(said))
 
 
 def _sizes(
@@ -121,23 +157,8 @@ def _too_few(runs: int, n_terms: int, n_old: int) -> InputError:
     return InputError([Fault(what, _WHERE, mend)])
 
 
-def _centre(study: Study, earlier: Earlier | None, actual: FloatArray) -> int:
-    """Find the candidate nearest to the middle of all that may be run."""
-    if not study.numeric:
-        return 0
-    x, _ = even_runnable(study, earlier)
-    away = to_coded(study.numeric, actual) - x.mean(axis=0)
-    return int((away**2).sum(axis=1).argmin())
-
-
-def _moments(model: PlannedModel, study: Study, earlier: Earlier | None) -> FloatArray:
-    """Average f f' evenly over all that may be run, block average."""
-    x, levels = even_runnable(study, earlier)
-    return average_moments(model, x, levels)
-
-
-def average_moments(model: PlannedModel, x: FloatArray, levels: IntArray) -> FloatArray:
-    """Average f f' over settings, coded (n, k), at levels (n, c): shape (q, q)."""
+def _moments(model: PlannedModel, x: FloatArray, levels: IntArray) -> FloatArray:
+    """Average f f' over settings, coded (n, k), at levels (n, c), block average: shape (q, q)."""
     terms = features(x)
     rows = np.zeros((len(x), len(model.terms)))
     for at in {tuple(row) for row in levels.tolist()}:

@@ -5,12 +5,14 @@ from __future__ import annotations
 import io
 from datetime import datetime
 from typing import Any
+from zipfile import ZipFile
 
 import xlsxwriter
 from openpyxl import load_workbook
 from openpyxl.styles import Protection
 from xlsxwriter.utility import xl_col_to_name
 
+from wideberth.errors import Fault, InputError
 from wideberth.plan.records import Plan
 from wideberth.plan.sheet import cells, check_columns, headings
 from wideberth.study.naming import AS_RUN
@@ -22,6 +24,7 @@ _CHECKED_ROWS = 500
 _ANY = 1e300
 # a workbook says when it was made; the same plan must give the same bytes
 _MADE = datetime(2000, 1, 1)
+_DRAWN = ("xl/charts/", "xl/media/", "xl/pivotTables/", "xl/vbaProject")
 _LINE = "#8a929b"
 _PLANNED = "#e9ecef"
 
@@ -41,9 +44,16 @@ def workbook_bytes(plan: Plan) -> bytes:
 
 
 def appended_workbook(plan: Plan, raw: bytes, table: SheetTable) -> bytes:
-    """Add the planned runs below the rows of a workbook's first visible sheet."""
+    """Add the planned runs below the rows of a workbook's first visible sheet.
+
+    Raises
+    ------
+    InputError
+        When a column is missing, or the workbook holds what adding to it would lose.
+    """
     check_columns(plan, table)
     book = load_workbook(io.BytesIO(raw))
+    _check_losses(book, raw, table.file)
     sheet = next(sheet for sheet in book.worksheets if sheet.sheet_state == "visible")
     row = max(row for row, _ in table.rows)
     for run in plan.runs:
@@ -62,6 +72,24 @@ def appended_workbook(plan: Plan, raw: bytes, table: SheetTable) -> bytes:
     target = io.BytesIO()
     book.save(target)
     return target.getvalue()
+
+
+def _check_losses(book: Any, raw: bytes, file: str) -> None:
+    """Refuse a workbook with what the library does not carry over: saved values and pictures."""
+    faults = []
+    for sheet in book.worksheets:
+        formulas = [c.coordinate for row in sheet.iter_rows() for c in row if c.data_type == "f"]
+        if formulas:
+            where = f"{file} sheet {sheet.title}, cell {formulas[0]}"
+            what = f"{len(formulas)} formulas would lose their saved values"
+            faults.append(Fault(what, where, "paste them as values, then add the runs"))
+    with ZipFile(io.BytesIO(raw)) as archive:
+        drawn = [name for name in archive.namelist() if name.startswith(_DRAWN)]
+    if drawn:
+        mend = "move them to a workbook of their own, then add the runs"
+        faults.append(Fault("the workbook's charts or pictures would be lost", file, mend))
+    if faults:
+        raise InputError(faults)
 
 
 def _locked_names(plan: Plan) -> set[str]:

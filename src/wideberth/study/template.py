@@ -60,6 +60,11 @@ goal  = { want = "near", poor = [250, 450], ideal = 350 }
 # sum     = { impeller = 1.0, binder = 2.0 }
 # at_most = 640
 
+# [plan]                    # another design than the one in runs.csv: wideberth plan
+# design   = "central composite"
+# axial    = "face"
+# error_sd = { fines = 0.8 }
+
 # [blocks]                  # when the sheet has a block column
 # future = "recur"
 
