@@ -45,7 +45,18 @@ COMMANDS = (
     "next",
     "memo",
 )
-HEAVY = ("numpy", "scipy", "pandas", "statsmodels", "cvxpy", "matplotlib", "pydantic", "jinja2")
+HEAVY = (
+    "numpy",
+    "scipy",
+    "pandas",
+    "statsmodels",
+    "cvxpy",
+    "matplotlib",
+    "pydantic",
+    "jinja2",
+    "openpyxl",
+    "xlsxwriter",
+)
 PRESENTING = ("matplotlib", "click", "jinja2")
 
 

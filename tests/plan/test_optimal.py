@@ -1,5 +1,6 @@
 """Optimal runs: the exchange against every possible plan, the certificate against the truth."""
 
+from dataclasses import replace
 from itertools import combinations_with_replacement
 
 import cvxpy as cp
@@ -186,3 +187,29 @@ def test_candidates_may_all_be_run_and_cover_the_cut():
     # evenly: the mean of the cut box by plain simulation
     sample = np.random.default_rng(0).uniform([-0.5, -1, -1], [2, 1, 1], (200_000, 3))
     assert x.mean(axis=0) == pytest.approx(sample[sample.sum(axis=1) >= -1].mean(axis=0), abs=0.03)
+
+
+def test_runs_already_made_count_and_the_new_ones_fill_what_they_leave_open():
+    x = np.array([[a, b] for a in (-1.0, 1.0) for b in (-1.0, 1.0)] + [[0.0, 0.0]] * 2)
+    study = draft(
+        2,
+        PlanChoice(design="optimal", runs=5),
+        x=x,
+        values={"y": x.sum(axis=1)},
+        blocks=["1"] * 6,
+        allowed={},
+        keep_runs=True,
+    )
+    plan = plan_runs(study, append=True)
+    # second order in two factors and one contrast between the two blocks
+    assert plan.quality.n_runs == 11
+    assert plan.quality.n_terms == 7
+    assert plan.quality.aliases == ()
+    coded = np.array([run.coded for run in plan.runs])
+    # four corners and centre runs tell no square: the new runs must lie between
+    assert (np.abs(coded).sum(axis=1) == 1).sum() >= 2
+    assert 0.5 < plan.certificate.efficiency <= 1.0
+    open_sheet = plan_runs(
+        replace(study, runs=replace(study.runs, measured=np.full((6, 1), np.nan))), append=True
+    )
+    assert any("6 runs of the sheet have no result yet" in f.text for f in open_sheet.findings)

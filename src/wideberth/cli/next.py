@@ -91,7 +91,8 @@ def _print(stage: Stage, study: Study) -> None:
     click.echo(f"{stage.decision.do.upper()}: {stage.decision.why}")
     path = stage.path
     if path is not None and stage.decision.do == "path":
-        header = ["step", *(named(f.name, f.unit) for f in study.factors), f"{path.response} about"]
+        straight = f"{named(path.response, path.unit)} if it stayed straight"
+        header = ["step", *(named(f.name, f.unit) for f in study.factors), straight]
         print_table(header, [path_row(study, path, step) for step in path.steps])
         click.echo(f"  {path.stopped}")
         click.echo(f"Cautions: {PLAN_CAUTION}")

@@ -269,9 +269,9 @@ def axial_distance(
     Parameters
     ----------
     stated : str or float
-        ``rotatable``: fourth root of F r_axial-corrected count, ``spherical``: the corners'
-        distance, ``face``: 1, ``orthogonal-blocks``: the squares' sums in proportion to the block
-        sizes, or a number.
+        ``rotatable``: fourth root of the two-level runs for each run on an axis, ``spherical``:
+        the corners' distance, ``face``: 1, ``orthogonal-blocks``: the sums of squares in proportion
+        to the block sizes, or a number.
     n_core, n_axial : int
         Two-level and axial runs, replicates included.
     centre_core, centre_axial : int

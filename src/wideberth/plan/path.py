@@ -77,12 +77,12 @@ def steepest_path(
 
 
 def _rule(judged: StageResponse, toward: float) -> str:
-    better, worse = ("above", "below") if toward > 0 else ("below", "above")
+    worse = "below" if toward > 0 else "above"
     noise = ""
     if judged.s and judged.df > 0:
         size = float(stdtrit(judged.df, _SURE)) * judged.s * float(np.sqrt(2))
         noise = f" (a difference of {size:.2g} {judged.unit} may be noise)".replace(" )", ")")
     return (
         f"Stop when two runs in succession lie {worse} the best so far{noise}; then plan a new"
-        f" two-level stage around the best. Go on only while runs come out {better} it."
+        " two-level stage around the best."
     )

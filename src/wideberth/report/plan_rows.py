@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
+import numpy as np
+
 from wideberth.plan.plan import variance_over
 from wideberth.plan.records import Plan, PlannedRun, WayOut
 from wideberth.report.numbers import format_setting, format_value, with_unit
@@ -75,6 +77,9 @@ def _variances(plan: Plan) -> Iterator[tuple[str, str]]:
             "prediction variance, average of its region [error variance]",
             _three(quality.mean_variance),
         )
+        half, most = np.quantile(quality.variance_levels, [0.5, 0.95])
+        below = f"{_three(float(half))} and {_three(float(most))}"
+        yield "half and 95 % of its region lie below [error variance]", below
         yield (
             "prediction variance, largest in its region [error variance]",
             _three(quality.most_variance),

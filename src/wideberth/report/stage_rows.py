@@ -42,8 +42,9 @@ def curvature_words(one: StageResponse) -> str:
 def path_row(study: Study, path: Path, step: PathStep) -> tuple[str, ...]:
     """Write one step of a path: number, settings, what the first-order model expects."""
     settings = (format_setting(study, f.name, step.setting[f.name]) for f in study.factors)
-    expected = with_unit(format_value(step.expected, abs(step.expected) / 100 or None), path.unit)
-    return (str(step.step), *settings, expected)
+    values = [one.expected for one in path.steps]
+    spread = max(values) - min(values) or abs(step.expected)
+    return (str(step.step), *settings, format_value(step.expected, spread / 20 or None))
 
 
 def _p_words(p: float | None) -> str:

@@ -178,6 +178,11 @@ class PlanChoice:
     error_sd: Mapping[str, float] = field(default_factory=dict)
     hold: tuple[str, ...] | None = None
 
+    @property
+    def fitted_order(self) -> Literal[1, 2]:
+        """Order of the model that the plan is judged by; a design brings its own terms."""
+        return self.order if self.design == "optimal" else 2
+
 
 @dataclass(frozen=True, slots=True)
 class Context:
