@@ -21,7 +21,7 @@ from wideberth.study.records import FloatArray, IntArray, PlanChoice, Study
 
 _SPARE = 5
 _CENTRE = 3
-_WORK = 600_000
+_WORK = 15e6
 _STARTS = (2, 40)
 _WHERE = "study.toml, plan.runs"
 
@@ -116,7 +116,7 @@ def optimal_task(
         fixed=old.T @ old + rows[middles].T @ rows[middles],
         moments=_moments(model, x, at),
     )
-    n_starts = int(np.clip(_WORK / rows.size, *_STARTS))
+    n_starts = int(np.clip(_WORK / (rows.size * max(sum(sizes), 1)), *_STARTS))
     return task, n_starts, Pool(coded, levels, middles, n_old, tuple(said))
 
 
