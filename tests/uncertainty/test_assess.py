@@ -10,7 +10,7 @@ from wideberth.fit.models import fit
 from wideberth.study.reading import read_study
 from wideberth.study.records import Limit
 from wideberth.uncertainty.assess import assess, draws_for, uncertainty
-from wideberth.uncertainty.location import evenly_spread, in_region, optimum_region
+from wideberth.uncertainty.location import edge_spread, evenly_spread, in_region, optimum_region
 
 
 def _hill(noise=0.5, *, k=2, centre=0.3, seed=0, **kwargs):

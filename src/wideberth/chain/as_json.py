@@ -20,6 +20,8 @@ from wideberth.decide.records import Choice
 from wideberth.errors import Fault
 from wideberth.fit.records import Model, Models
 from wideberth.operate.records import Robustness, Window
+from wideberth.plan.plan import offence_faults
+from wideberth.plan.records import Plan, Stage
 from wideberth.study.records import Finding, Study
 from wideberth.surface.records import Shape
 from wideberth.uncertainty.records import Uncertainty
@@ -153,6 +155,31 @@ def record_json(record: Record) -> Json:
         "prospects": prospects_json(record.prospects),
         "maps": _plain(record.maps),
     }
+
+
+def plan_json(plan: Plan) -> Json:
+    """Give the answer of ``plan``: a refused one with its errors, one for each offending run."""
+    content: Json = {**_head("plan", plan.study), "status": plan.status, "seed": plan.seed}
+    if plan.offending:
+        content["errors"] = [asdict(fault) for fault in offence_faults(plan)]
+    choice = {key: value for key, value in _plain(plan.choice).items() if value is not None}
+    design = plan.design
+    return {
+        **content,
+        "plan": choice,
+        "axial_distance": design.axial_distance,
+        "runs": _plain(plan.runs),
+        "quality": _plain(plan.quality),
+        "rounding": _plain(plan.rounding),
+        "certificate": _plain(plan.certificate),
+        "ways_out": _plain(plan.ways_out),
+        "findings": [asdict(finding) for finding in plan.findings],
+    }
+
+
+def stage_json(stage: Stage, study: Study) -> Json:
+    """Give the answer of ``next`` after a two-level stage."""
+    return {**_head("next", study), "status": stage.decision.do, **_plain(stage)}
 
 
 def _head(command: str, study: Study) -> Json:

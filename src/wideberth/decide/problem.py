@@ -249,7 +249,7 @@ def _guarding(models: Models, response: Response, bare: tuple[Arena, ...], seed:
     guard = Guard(
         limit.guard,
         model.df_residual,
-        _split_confidence(study, limit.confidence, limit.guard),
+        split_confidence(study, limit.confidence, limit.guard),
         limit.share,
     )
     s = model.s or 0.0
@@ -279,7 +279,7 @@ def _guarding(models: Models, response: Response, bare: tuple[Arena, ...], seed:
     return Guarding(guard, smooth, factor, scale, True, True)
 
 
-def _split_confidence(study: Study, confidence: float, kind: str) -> float:
+def split_confidence(study: Study, confidence: float, kind: str) -> float:
     """Share the risk equally among all sides of ``share`` limits."""
     if kind != "share":
         return confidence

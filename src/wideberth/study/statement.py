@@ -9,6 +9,7 @@ from decimal import Decimal
 from wideberth.errors import Fault
 from wideberth.study.lines import KeyPath
 from wideberth.study.naming import name_faults, nearest
+from wideberth.study.plan_statement import plan_faults
 from wideberth.study.records import (
     CategoricalFactor,
     Factor,
@@ -55,6 +56,7 @@ class Statement:
             yield from self._response_faults(name, response)
         yield from self._constraint_faults()
         yield from self._today_faults()
+        yield from plan_faults(self.tables, self.at)
 
     def _factor_faults(self, name: str, table: FactorTable) -> Iterator[Fault]:
         where = self.at("factors", name)
@@ -76,7 +78,7 @@ class Statement:
         where = self.at("factors", name)
         stated = [
             k
-            for k in ("low", "high", "allowed", "tolerance", "settable_step")
+            for k in ("low", "high", "allowed", "tolerance", "settable_step", "reading_error")
             if getattr(table, k) is not None
         ]
         if stated:
@@ -311,6 +313,7 @@ def _factor(name: str, table: FactorTable) -> Factor:
         tolerance=table.tolerance,
         settable_step=None if step is None else Decimal(repr(step)),
         scale=table.scale,
+        reading_error=table.reading_error,
     )
 
 
