@@ -118,18 +118,18 @@ def test_losses_by_limit_and_by_source_against_plain_simulation():
     limits = {"y": Limit(19.0, None, "none"), "z": Limit(None, 11.0, "none")}
     models = fit(make_study(x, {"y": y, "z": z}, limits=limits, tolerance=0.4))
     problem = build_problem(models, seed=1, room=False)
-    draws = draw_coefficients(models, 800, 1)
+    draws = draw_coefficients(models, 500, 1)
     place, sd = np.array([0.2, 0.3]), np.array([0.2, 0.2])
     found = losses(problem, draws, (), place, sd, 1)
-    settings = place + sd * rng.standard_normal((800, 2))
+    settings = place + sd * rng.standard_normal((500, 2))
     shares = {}
     for name, bound, sign in (("y", 19.0, -1), ("z", 11.0, 1)):
         model = models[name]
-        own = settings[rng.permutation(800)]
-        f = np.column_stack([np.ones(800), own, own**2, own[:, 0] * own[:, 1]])
+        own = settings[rng.permutation(500)]
+        f = np.column_stack([np.ones(500), own, own**2, own[:, 0] * own[:, 1]])
         f = f[:, [term.monomial for term in model.terms]]
         mean = (f * draws.of(model)).sum(axis=1)
-        noisy = mean[:, None] + draws.sd(model)[:, None] * rng.standard_normal((800, 60))
+        noisy = mean[:, None] + draws.sd(model)[:, None] * rng.standard_normal((500, 60))
         shares[name] = (sign * (noisy - bound) > 0).mean()
     by_name = {words.split()[0]: share for words, share in found.limits.items()}
     assert by_name == pytest.approx(shares, abs=0.03)

@@ -97,5 +97,4 @@ def test_the_region_covers_the_true_optimum_as_often_as_the_reference(kind, k):
     error = np.sqrt(
         covered * (1 - covered) / STUDIES + expected * (1 - expected) / REFERENCE_STUDIES
     )
-    print(kind, k, covered)
     assert covered >= expected - 3 * error

@@ -21,6 +21,8 @@ from wideberth.quadratic.terms import features
 from wideberth.seeds import stream
 from wideberth.study.records import FloatArray
 
+N_DRAWS = 500
+"""Draws that are looked at: the losses are printed as whole batches of 100."""
 _AT_ONCE = 128
 
 
@@ -52,8 +54,9 @@ def losses(
 ) -> Losses | None:
     """Say where conformance at a coded setting (k,) is lost; ``None`` without limits.
 
-    The batches are those of `conformance` with the same seed.
+    The batches are those of `conformance` with the same seed, under the first 500 draws.
     """
+    draws = draws.part(0, N_DRAWS)
     whole = conformance(problem, draws, levels, x, error_sd, seed)
     if whole is None:
         return None

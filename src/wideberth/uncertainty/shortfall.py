@@ -16,6 +16,7 @@ to the region of Box and Hunter (1954), Biometrika 41, 190-199 (from memory).
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import TypeVar
 
 import numpy as np
 from scipy.special import ndtri
@@ -27,7 +28,7 @@ from wideberth.decide.region import Region, even_points, inside
 from wideberth.fit.draws import Draws
 from wideberth.fit.records import Models
 from wideberth.quadratic.terms import features
-from wideberth.study.records import FloatArray
+from wideberth.study.records import FloatArray, IntArray
 
 N_DRAWS = 300
 _N_OTHERS = 384
@@ -37,6 +38,8 @@ _AT_ONCE = 64
 _TIE = 1e-3
 _LEAST_SD = 1e-4
 _LEAST_MARGIN_SD = 1e-9
+
+Array = TypeVar("Array", FloatArray, IntArray)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -79,11 +82,36 @@ class Shortfall:
 
     def of(self, x: FloatArray, most: float) -> FloatArray:
         """Give the studentised shortfall of coded settings (n, k), exact up to ``most``: (n,)."""
-        result = _far(self.rows, self.seen, x)[:, 0]
-        for part in np.array_split(np.flatnonzero(result <= most), 1 + len(x) // _AT_ONCE):
-            if len(part):
-                near = _close(self.rows, x[part])[:, 0]
-                result[part] = np.maximum(result[part], near)
+        result = np.concatenate(
+            [np.zeros(0), *(self._far(part) for part in _in_parts(x, _AT_ONCE))]
+        )
+        open_ = np.flatnonzero(result <= most)
+        for part in _in_parts(open_, _AT_ONCE):
+            result[part] = np.maximum(result[part], self._close(x[part]))
+        return result
+
+    def _far(self, x: FloatArray) -> FloatArray:
+        """Hold settings against settings anywhere, and against their limits, as the fit sees it."""
+        here = _see(self.rows, x)
+        away, others = here.merit[1:], self.seen.merit[1:]
+        away, others = away - away.mean(axis=0), others - others.mean(axis=0)
+        # the spread of a difference from a product of matrices
+        square = (away**2).sum(axis=0)[:, None] + (others**2).sum(axis=0) - 2 * away.T @ others
+        spread = np.sqrt(np.maximum(square, 0.0) / len(away)) + _LEAST_SD
+        gain = np.maximum(self.seen.merit[0] - here.merit[0][:, None], 0.0)
+        better = np.minimum(gain / spread, _allowed(self.seen.margins)[0]).max(axis=1)
+        result: FloatArray = np.maximum(better, _broken(here.margins)[0])
+        return result
+
+    def _close(self, x: FloatArray) -> FloatArray:
+        """Hold settings against settings near by, as the fit sees it: (n,)."""
+        near = _around(self.rows.region, x)
+        n, m, k = near.shape
+        here, around = _see(self.rows, x), _see(self.rows, near.reshape(-1, k))
+        gain = around.merit.reshape(-1, n, m) - here.merit[:, :, None]
+        spread = gain[1:].std(axis=0) + _LEAST_SD
+        allowed = _allowed(around.margins)[0].reshape(n, m)
+        result: FloatArray = np.minimum(np.maximum(gain[0], 0.0) / spread, allowed).max(axis=1)
         return result
 
 
@@ -94,8 +122,14 @@ def shortfall(
     rows = drawn_arena(problem, levels, mode, _with_fit(problem.models, draws.part(0, N_DRAWS)))
     others = np.concatenate([best[None, :], _spread(problem.region)])
     seen = _see(rows, others)
-    here = best[None, :]
-    reached = np.maximum(_far(rows, seen, here), _close(rows, here))[0, 1:]
+    here = _see(rows, best[None, :])
+    near = _see(rows, _around(problem.region, best[None, :])[0])
+    reached = _broken(here.margins)[1:, 0]
+    for against in (seen, near):
+        gain = against.merit - here.merit
+        spread = gain[1:].std(axis=0) + _LEAST_SD
+        better = np.minimum(np.maximum(gain, 0.0) / spread, _allowed(against.margins))
+        reached = np.maximum(reached, better[1:].max(axis=1))
     return Shortfall(rows, seen, np.sort(reached))
 
 
@@ -159,42 +193,6 @@ def _see(rows: Arena, x: FloatArray) -> _Seen:
     return _Seen(merit.reshape(shape), np.array(margins).reshape(len(margins), *shape))
 
 
-def _far(rows: Arena, seen: _Seen, x: FloatArray) -> FloatArray:
-    """Hold settings (n, k) against settings anywhere, and against their limits: (n, 1 + draws)."""
-    here = _see(rows, x)
-    worst, allowed = _broken(here.margins), _allowed(seen.margins)
-    for i in range(len(x)):
-        better = _better(seen.merit - here.merit[:, i, None], allowed)
-        worst[:, i] = np.maximum(worst[:, i], better)
-    result: FloatArray = worst.T.copy()
-    return result
-
-
-def _close(rows: Arena, x: FloatArray) -> FloatArray:
-    """Hold settings (n, k) against settings near by: (n, 1 + draws)."""
-    near = _around(rows.region, x)
-    n, m, k = near.shape
-    here, around = _see(rows, x), _see(rows, near.reshape(-1, k))
-    merit = around.merit.reshape(len(around.merit), n, m)
-    margins = around.margins.reshape(len(around.margins), len(merit), n, m)
-    return np.stack(
-        [
-            _better(merit[:, i] - here.merit[:, i, None], _allowed(margins[:, :, i]))
-            for i in range(n)
-        ]
-    )
-
-
-def _better(gain: FloatArray, allowed: FloatArray) -> FloatArray:
-    """Give the largest studentised gain (1 + n, N) of any other setting, as far as it is allowed.
-
-    The spread is that over the draws; shape (1 + n,).
-    """
-    spread = gain[1:].std(axis=0) + _LEAST_SD
-    result: FloatArray = np.minimum(np.maximum(gain, 0.0) / spread, allowed).max(axis=1)
-    return result
-
-
 def _allowed(margins: FloatArray) -> FloatArray:
     """Studentise how surely each setting holds all limits: (n_limits, 1 + n, N) to (1 + n, N)."""
     if not len(margins):
@@ -211,3 +209,7 @@ def _broken(margins: FloatArray) -> FloatArray:
     spread = margins[:, 1:].std(axis=1, keepdims=True) + _LEAST_MARGIN_SD
     result: FloatArray = (np.maximum(-margins, 0.0) / spread).max(axis=0)
     return result
+
+
+def _in_parts(values: Array, size: int) -> list[Array]:
+    return [values[i : i + size] for i in range(0, len(values), size)]
