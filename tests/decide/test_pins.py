@@ -107,3 +107,12 @@ def test_judging_and_fixing_at_once_is_refused():
     setting = {"catalyst": 1.2, "pressure": 8.0, "substrate": 140.0}
     with pytest.raises(RefusedError, match="at once"):
         recommend(models, at=setting, fix={"pressure": 9.0})
+
+
+def test_a_value_whose_room_reaches_beyond_what_was_explored_is_refused():
+    x = central_composite(2)
+    y = 20 + 3 * x[:, 0] + 0.2 * np.random.default_rng(0).standard_normal(len(x))
+    study = make_study(x, {"y": y}, goals={"y": more(10, 30)}, tolerance=0.4)
+    with pytest.raises(RefusedError, match="room of the tolerances"):
+        recommend(fit(study), fix={"f1": -1.0})
+    assert recommend(fit(study), fix={"f1": -1.0}, room=False).status == "met"

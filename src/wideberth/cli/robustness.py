@@ -62,6 +62,12 @@ def command(
 
 def print_robustness(answer: Robustness, study: Study) -> None:
     """Print what setting error does to every response."""
+    from wideberth.report.drift_words import (
+        DRIFT_HEADER,
+        correction_sentence,
+        drift_row,
+        looser_sentence,
+    )
     from wideberth.report.rows import wander_row
     from wideberth.report.wording import CAUTIONS, conformance_words, setting_words
 
@@ -79,4 +85,12 @@ def print_robustness(answer: Robustness, study: Study) -> None:
             f"\nAll limits together, settings wandering: {conformance_words(answer.conformance)}."
         )
     click.echo(answer.advice)
+    if answer.drifts:
+        click.echo(f"{looser_sentence(answer)}")
+        click.echo("\nOne factor drifts by tolerances: batches of 100 inside all limits")
+        print_table(DRIFT_HEADER, [drift_row(one, study) for one in answer.drifts])
+    if answer.corrections:
+        click.echo("\nOff and cannot be brought back")
+    for one in answer.corrections:
+        click.echo(f"  {correction_sentence(one, study)}")
     click.echo("Cautions: " + " ".join(CAUTIONS))

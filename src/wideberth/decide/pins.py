@@ -10,9 +10,12 @@ from dataclasses import replace
 import numpy as np
 from scipy.linalg import null_space
 
-from wideberth.decide.problem import Problem
+from wideberth.decide.aims import peak
+from wideberth.decide.problem import Problem, bare_arena
 from wideberth.decide.region import Region, centred
+from wideberth.decide.search import seek
 from wideberth.errors import refusal
+from wideberth.quadratic.terms import n_terms
 from wideberth.study.coding import to_coded
 from wideberth.study.records import CategoricalFactor, FloatArray, Setting, Study
 
@@ -44,12 +47,22 @@ def with_pins(problem: Problem, fix: Setting) -> Problem:
             raise refusal(f"{name} is {value}", _WHERE, f"give a number in {factor.unit}")
         elif factor.scale == "log" and value <= 0:
             raise refusal(f"{name} is {value:g}", _WHERE, "give a number above 0")
-    return replace(
+    pinned = replace(
         problem,
         region=_pinned(problem.region, study, fix),
         tight=_pinned(problem.tight, study, fix),
         combinations=_kept_levels(problem, fix),
+        known=(),
     )
+    rows = replace(bare_arena(pinned.tight, pinned.combinations[0]), room=problem.room)
+    anywhere = peak(np.zeros(n_terms(len(study.numeric))))
+    if seek(rows, anywhere) is None:
+        raise refusal(
+            "around these values the room of the tolerances reaches beyond what was explored",
+            _WHERE,
+            "fix values farther inside, or ask for the bare optimum with --room none",
+        )
+    return pinned
 
 
 def _pinned(region: Region, study: Study, fix: Setting) -> Region:

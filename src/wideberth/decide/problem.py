@@ -65,8 +65,8 @@ class Problem:
     """All that a search for the setpoint needs.
 
     ``region`` is everything that may be searched, ``tight`` what is left of it for the middle of
-    a room. ``combinations`` are the levels of the categorical factors; ``known`` are places worth
-    a start of every search.
+    a room. ``combinations`` are the levels of the categorical factors; ``known`` are places of
+    the region worth a start of every search.
     """
 
     models: Models

@@ -81,6 +81,65 @@ class Wander:
 
 
 @dataclass(frozen=True, slots=True)
+class DriftStep:
+    """One factor a whole number of tolerances off, the others wandering as stated.
+
+    ``broken`` names the limits whose guard does not hold at that setting; ``explored`` tells
+    whether it was explored at all; ``conformance`` is ``None`` without limits or draws.
+    """
+
+    tolerances: int
+    value: float
+    explored: bool
+    conformance: float | None
+    broken: tuple[str, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Drift:
+    """One factor drifting by up to three tolerances to either side."""
+
+    factor: str
+    unit: str
+    steps: tuple[DriftStep, ...]
+
+
+@dataclass(frozen=True, slots=True)
+class Correction:
+    """What to do with the other factors when one is off and cannot be brought back.
+
+    Attributes
+    ----------
+    tolerances : int
+        How far off, with its sign; ``value`` is where the factor then stands.
+    broken : tuple of str
+        Limits whose guard does not hold there if nothing is done.
+    before, after : float or None
+        D if nothing is done and after the correction; ``after`` is ``None`` where no setting of
+        the others holds every limit.
+    changes : mapping
+        By how much to move each other factor; empty where nothing is worth doing.
+    """
+
+    factor: str
+    unit: str
+    tolerances: int
+    value: float
+    broken: tuple[str, ...]
+    before: float | None
+    after: float | None
+    changes: Mapping[str, float]
+
+
+@dataclass(frozen=True, slots=True)
+class Looser:
+    """One tolerance doubled: whether every guarded limit still holds, and the conformance."""
+
+    holds: bool
+    conformance: float | None
+
+
+@dataclass(frozen=True, slots=True)
 class Robustness:
     """What happens at a setting when the factors wander within their tolerances.
 
@@ -90,6 +149,10 @@ class Robustness:
         Setting error included; ``None`` without limits or draws.
     halved : mapping
         Conformance with one factor's tolerance halved.
+    doubled : mapping
+        One factor's tolerance doubled.
+    drifts : tuple of Drift
+    corrections : tuple of Correction
     tighten_first : str
         The factor whose tolerance to tighten first, ``""`` when nothing is gained.
     advice : str
@@ -101,6 +164,9 @@ class Robustness:
     responses: Mapping[str, Wander]
     conformance: Conformance | None
     halved: Mapping[str, float]
+    doubled: Mapping[str, Looser]
+    drifts: tuple[Drift, ...]
+    corrections: tuple[Correction, ...]
     tighten_first: str
     advice: str
     findings: tuple[Finding, ...]

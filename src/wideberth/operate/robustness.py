@@ -12,6 +12,7 @@ from wideberth.decide.records import Choice
 from wideberth.decide.region import room_of
 from wideberth.fit.draws import Draws
 from wideberth.fit.records import Model, Models, surface
+from wideberth.operate.drift import corrections, drifts, loosened
 from wideberth.operate.records import Robustness, Wander
 from wideberth.progress import Progress, silent
 from wideberth.quadratic.box import extreme_over_box
@@ -47,7 +48,8 @@ def wander(
 ) -> Robustness:
     """Say what setting error does at a choice that `solve` gave with its problem."""
     if choice.setpoint is None:
-        return Robustness(None, choice.seed, {}, None, {}, "", "There is no setting to judge.", ())
+        reason = "There is no setting to judge."
+        return Robustness(None, choice.seed, {}, None, {}, {}, (), (), "", reason, ())
     study = problem.study
     levels, x = read_setting(study, choice.setpoint)
     sd = setting_sd(study)
@@ -70,7 +72,17 @@ def wander(
         text = f"{', '.join(missing)}: no tolerance is stated, so taken as held exactly."
         findings = (Finding("look", text),)
     return Robustness(
-        choice.setpoint, choice.seed, responses, held, halved, first, advice, findings
+        setting=choice.setpoint,
+        seed=choice.seed,
+        responses=responses,
+        conformance=held,
+        halved=halved,
+        doubled=loosened(problem, draws, levels, x, choice.seed),
+        drifts=drifts(problem, draws, levels, x, choice.seed),
+        corrections=corrections(problem, levels, x),
+        tighten_first=first,
+        advice=advice,
+        findings=findings,
     )
 
 

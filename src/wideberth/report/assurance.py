@@ -4,6 +4,12 @@ from __future__ import annotations
 
 from wideberth.chain.record import Record
 from wideberth.report.blocks import Block, Bullets, Drawing, Heading, Paragraph, Table
+from wideberth.report.drift_words import (
+    DRIFT_HEADER,
+    correction_sentence,
+    drift_row,
+    looser_sentence,
+)
 from wideberth.report.numbers import format_range, format_setting, format_value, named, with_unit
 from wideberth.report.ridge_figure import draw_ridge
 from wideberth.report.rows import region_header, region_row, wander_row, window_row
@@ -138,6 +144,21 @@ def _wandering(record: Record) -> list[Block]:
         ),
         Drawing(figure, f"Shares of variance by factor: {alt}.", "What setting error adds."),
         Table("What wandering settings do", header, rows),
+        *_drifting(record),
+    ]
+
+
+def _drifting(record: Record) -> list[Block]:
+    answer, study = record.robustness, record.study
+    if not answer.drifts:
+        return []
+    rows = tuple(drift_row(one, study) for one in answer.drifts)
+    caption = "One factor drifts by its tolerances: batches of 100 inside all limits"
+    said = tuple(correction_sentence(one, study) for one in answer.corrections)
+    return [
+        Table(caption, DRIFT_HEADER, rows),
+        Paragraph(looser_sentence(answer)),
+        *([Bullets("Off and cannot be brought back", said)] if said else []),
     ]
 
 
