@@ -8,9 +8,12 @@ from scipy import stats
 
 from support.brute import second_order
 from support.build import central_composite, make_study, more
+from wideberth.decide.problem import arena
 from wideberth.decide.recommend import solve
+from wideberth.errors import RefusedError
 from wideberth.fit.models import fit
 from wideberth.operate.window import window, window_around
+from wideberth.study.coding import to_coded
 from wideberth.study.reading import read_study
 from wideberth.study.records import Constraint, Limit
 
@@ -226,3 +229,48 @@ def test_a_saturated_study_can_claim_no_window():
     box = window(fit(study))
     assert box.status == "none"
     assert "degrees of freedom" in box.must_give[0]
+
+
+def test_a_range_that_is_asked_for_is_proven_or_refuted_by_a_setting_inside():
+    models = fit(read_study("studies/process/hydrogenation"))
+    problem, choice = solve(models)
+    good = window_around(problem, choice, hold={"pressure": (8.0, 10.0)})
+    assert good.status == "proven"
+    assert good.ranges["pressure"] == pytest.approx((8.0, 10.0))
+    assert good.stopped_by["pressure"].low == "the range asked for"
+    rows = arena(problem, (), "simultaneous")
+    rng = np.random.default_rng(0)
+    low, high = np.array(list(good.ranges.values())).T
+    inside = to_coded(problem.study.numeric, rng.uniform(low, high, (50_000, 3)))
+    assert min(row.value(inside).min() for row in rows.hard) >= -1e-9
+    bad = window_around(problem, choice, hold={"pressure": (8.0, 12.0)})
+    assert bad.status == "none"
+    assert 8.0 <= bad.counterexample["pressure"] <= 12.0
+    place = to_coded(problem.study.numeric, np.array(list(bad.counterexample.values())))
+    assert min(float(row.value(place)) for row in rows.hard) < 0
+
+
+@pytest.mark.parametrize(
+    ("hold", "what"),
+    [
+        ({"pH": (1.0, 2.0)}, "no numeric factor"),
+        ({"pressure": (10.0, 8.0)}, "no range"),
+        ({"pressure": (8.0, float("nan"))}, "no range"),
+    ],
+)
+def test_a_range_that_cannot_be_read_is_refused(hold, what):
+    models = fit(read_study("studies/process/hydrogenation"))
+    with pytest.raises(RefusedError, match=what):
+        window(models, hold=hold)
+
+
+def test_the_three_ranges_are_nested_and_acting_in_time_keeps_scatter_inside():
+    models = fit(read_study("studies/process/hydrogenation"))
+    box = window(models)
+    for factor in models.study.numeric:
+        hold, act, never = box.hold[factor.name], box.act_at[factor.name], box.ranges[factor.name]
+        assert never[0] <= act[0] <= hold[0] < hold[1] <= act[1] <= never[1]
+        for side in (0, 1):
+            room = abs(act[side] - never[side])
+            at_hold = act[side] == pytest.approx(hold[side])
+            assert at_hold or room == pytest.approx(factor.tolerance)

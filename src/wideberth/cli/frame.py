@@ -128,6 +128,23 @@ def read_at(study: Study, text: str | None, option: str = "--at") -> dict[str, f
     return setting
 
 
+def read_ranges(text: str | None, option: str) -> dict[str, tuple[float, float]]:
+    """Read ranges given with an option as ``NAME=LOW:HIGH,...``; empty when none were."""
+    ranges: dict[str, tuple[float, float]] = {}
+    for part in text.split(",") if text is not None else ():
+        name, equals, ends = (piece.strip() for piece in part.partition("="))
+        low, colon, high = ends.partition(":")
+        if not equals or not colon:
+            raise refusal(f"'{part}' is no NAME=LOW:HIGH", option, "write pressure=8:10")
+        if name in ranges:
+            raise refusal(f"{name} is given twice", option, "give every factor once")
+        try:
+            ranges[name] = float(low), float(high)
+        except ValueError as error:
+            raise refusal(f"{name} is '{ends}'", option, "give two numbers") from error
+    return ranges
+
+
 def print_table(header: Sequence[str], rows: Iterable[Sequence[str]]) -> None:
     """Print aligned columns; the first is flush left, the others flush right."""
     lines = [list(header), *(list(row) for row in rows)]

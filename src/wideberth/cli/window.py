@@ -13,6 +13,7 @@ from wideberth.cli.frame import (
     print_table,
     quiet_option,
     read_at,
+    read_ranges,
     seed_option,
     study_argument,
 )
@@ -25,11 +26,20 @@ if TYPE_CHECKING:
 @click.command("window")
 @study_argument
 @at_option
+@click.option("--hold", help="Prove or refute ranges: NAME=LOW:HIGH,...")
 @seed_option
 @json_option
 @quiet_option
 @guarded
-def command(study_dir: str, *, at: str | None, seed: int | None, as_json: bool, quiet: bool) -> int:
+def command(
+    study_dir: str,
+    *,
+    at: str | None,
+    hold: str | None,
+    seed: int | None,
+    as_json: bool,
+    quiet: bool,
+) -> int:
     """Give the operating window: the box around the setpoint in all of which every limit holds.
 
     Example: wideberth window my-study
@@ -42,7 +52,13 @@ def command(study_dir: str, *, at: str | None, seed: int | None, as_json: bool, 
 
     study = read_study(study_dir)
     progress = ProgressLine(quiet=quiet or as_json)
-    box = window(fit(study), seed=seed, at=read_at(study, at), progress=progress)
+    box = window(
+        fit(study),
+        seed=seed,
+        at=read_at(study, at),
+        hold=read_ranges(hold, "--hold"),
+        progress=progress,
+    )
     progress.close()
     if as_json:
         click.echo(dumps(window_json(box, study)), nl=False)
@@ -53,7 +69,7 @@ def command(study_dir: str, *, at: str | None, seed: int | None, as_json: bool, 
 
 def print_window(box: Window, study: Study) -> None:
     """Print a window, or what stands against one."""
-    from wideberth.report.rows import window_row
+    from wideberth.report.rows import WINDOW_HEADER, window_row
     from wideberth.report.wording import (
         CAUTIONS,
         SINGLY_WARNING,
@@ -66,9 +82,11 @@ def print_window(box: Window, study: Study) -> None:
     click.echo(window_sentence(box))
     for sentence in box.must_give:
         click.echo(f"  {sentence}")
+    if box.counterexample is not None:
+        click.echo(f"  It breaks at {setting_words(study, box.counterexample)}.")
     rows = [window_row(box, factor) for factor in study.numeric if box.status == "proven"]
     if rows:
         click.echo("")
-        print_table(("factor", "window", "stopped below by", "above by", "alone"), rows)
+        print_table(WINDOW_HEADER, rows)
         click.echo(f"\n{SINGLY_WARNING}")
     click.echo("Cautions: " + " ".join(CAUTIONS))

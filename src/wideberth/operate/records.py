@@ -33,6 +33,10 @@ class Window:
         The proven box in own units; empty without a window.
     settable : mapping
         The same moved inwards to whole settable steps, never inside the room.
+    hold : mapping
+        What each factor is held within: its room, or the range that was asked for.
+    act_at : mapping
+        Where to act: the window less the room, so that ordinary scatter stays inside the window.
     relative_volume : float or None
         Product over the factors of the box's width by the width explored.
     stopped_by : mapping
@@ -42,17 +46,22 @@ class Window:
         Boxes that the proof needed.
     must_give : tuple of str
         Without a window: what stands against it.
+    counterexample : Setting or None
+        Where a range was asked for: a setting inside it at which something breaks.
     """
 
     status: Literal["proven", "none"]
     setting: Setting | None
     ranges: Mapping[str, Ends]
     settable: Mapping[str, Ends]
+    hold: Mapping[str, Ends]
+    act_at: Mapping[str, Ends]
     relative_volume: float | None
     stopped_by: Mapping[str, Stop]
     singly: Mapping[str, Ends]
     boxes: int
     must_give: tuple[str, ...]
+    counterexample: Setting | None = None
 
 
 @dataclass(frozen=True, slots=True)

@@ -2,18 +2,22 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
+from dataclasses import replace
 from decimal import ROUND_CEILING, ROUND_FLOOR, Decimal
 
 import numpy as np
 
 from wideberth.decide.conflicts import side_text
-from wideberth.decide.judge import read_setting
+from wideberth.decide.judge import own_setting, read_setting
 from wideberth.decide.problem import Problem, arena
 from wideberth.decide.recommend import solve
 from wideberth.decide.records import Choice
 from wideberth.decide.region import room_of
 from wideberth.decide.search import HOLDS
+from wideberth.errors import refusal
 from wideberth.fit.records import Models
+from wideberth.operate.proof import prove_over_box
 from wideberth.operate.records import Ends, Stop, Window
 from wideberth.operate.widest import (
     Box,
@@ -27,14 +31,15 @@ from wideberth.operate.widest import (
     worst_over,
 )
 from wideberth.progress import Progress, silent
-from wideberth.study.coding import to_actual
-from wideberth.study.records import NumericFactor, Setting
+from wideberth.study.coding import to_actual, to_coded
+from wideberth.study.records import FloatArray, NumericFactor, Setting
 from wideberth.surface.explored import factor_ranges
 
 _UNSUPPORTED = (
     "A model that the answer rests on must not be used, or the setting was never explored: no"
     " window can be claimed."
 )
+_ASKED = Stop("the range asked for", "the range asked for")
 
 
 def window(
@@ -42,20 +47,33 @@ def window(
     *,
     seed: int | None = None,
     at: Setting | None = None,
+    hold: Mapping[str, Ends] | None = None,
     progress: Progress = silent,
 ) -> Window:
     """Give the operating window around the recommended setting, or one of the person's own.
 
+    Parameters
+    ----------
+    hold : mapping, optional
+        Ranges of some factors, own units, to be proven or refuted; the others keep their room and
+        are widened only where the ranges hold.
+
     Raises
     ------
     RefusedError
-        As `recommend`.
+        As `recommend`, and when a range cannot be read.
     """
     problem, choice = solve(models, seed=seed, at=at, progress=progress)
-    return window_around(problem, choice, progress=progress)
+    return window_around(problem, choice, hold=hold, progress=progress)
 
 
-def window_around(problem: Problem, choice: Choice, *, progress: Progress = silent) -> Window:
+def window_around(
+    problem: Problem,
+    choice: Choice,
+    *,
+    hold: Mapping[str, Ends] | None = None,
+    progress: Progress = silent,
+) -> Window:
     """Give the operating window around a choice that `solve` gave with its problem."""
     if choice.setpoint is None:
         return _none(choice, ("There is no setting to draw a window around.",))
@@ -66,9 +84,13 @@ def window_around(problem: Problem, choice: Choice, *, progress: Progress = sile
     if not problem.possible:
         return _none(choice, ("The runs leave no degrees of freedom to guard a limit with.",))
     ground = ground_of(arena(problem, levels, "simultaneous"), problem.region, room_of(study), x)
+    room = ground.core
+    if hold:
+        ground = _held(problem, ground, hold)
     core, boxes = proven(ground, ground.core)
     if core is None or not np.array_equal(core.low, ground.core.low):
-        return _none(choice, _must_give(problem, ground))
+        against = _counterexample(problem, ground, levels) if hold else None
+        return replace(_none(choice, _must_give(problem, ground)), counterexample=against)
     progress("window", 0.2)
     box, more = largest_box(ground)
     progress("window", 0.7)
@@ -87,8 +109,13 @@ def window_around(problem: Problem, choice: Choice, *, progress: Progress = sile
         setting=choice.setpoint,
         ranges=ranges,
         settable={f.name: _inwards(f, ranges[f.name], held[f.name]) for f in factors},
+        hold=held,
+        act_at=_ends(factors, _inside(box, ground.core, x, room)),
         relative_volume=float(np.prod(share)),
-        stopped_by={f.name: Stop(*stop) for f, stop in zip(factors, stops, strict=True)},
+        stopped_by={
+            f.name: _ASKED if hold and f.name in hold else Stop(*stop)
+            for f, stop in zip(factors, stops, strict=True)
+        },
         singly={
             f.name: _ends(factors, one)[f.name] for f, one in zip(factors, singly, strict=True)
         },
@@ -98,7 +125,50 @@ def window_around(problem: Problem, choice: Choice, *, progress: Progress = sile
 
 
 def _none(choice: Choice, must_give: tuple[str, ...]) -> Window:
-    return Window("none", choice.setpoint, {}, {}, None, {}, {}, 0, must_give)
+    return Window("none", choice.setpoint, {}, {}, {}, {}, None, {}, {}, 0, must_give)
+
+
+def _held(problem: Problem, ground: Ground, hold: Mapping[str, Ends]) -> Ground:
+    """Take the stated ranges into the core; their factors are not widened beyond them."""
+    factors = problem.study.numeric
+    names = [factor.name for factor in factors]
+    low, high = (to_actual(factors, end) for end in (ground.core.low, ground.core.high))
+    free = ground.free.copy()
+    for name, (first, last) in hold.items():
+        if name not in names:
+            raise refusal(
+                f"no numeric factor is called {name}", "--hold", f"use {', '.join(names)}"
+            )
+        j = names.index(name)
+        if not (np.isfinite([first, last]).all() and first <= last):
+            raise refusal(f"{name} from {first:g} to {last:g} is no range", "--hold", "low first")
+        if factors[j].scale == "log" and first <= 0:
+            raise refusal(f"{name} is {first:g}", "--hold", "give numbers above 0")
+        low[j], high[j], free[j] = first, last, False
+    core = Box(to_coded(factors, low), to_coded(factors, high))
+    return replace(ground, core=core, free=free)
+
+
+def _counterexample(problem: Problem, ground: Ground, levels: tuple[int, ...]) -> Setting | None:
+    """Find a setting of the core that breaks a row or a plane."""
+    for row in ground.rows:
+        found = prove_over_box(row, ground.core.low, ground.core.high, HOLDS)
+        if found.breaks is not None:
+            return own_setting(problem.study, levels, found.breaks)
+    slack = plane_slack(ground, ground.core)
+    if slack.min(initial=np.inf) < HOLDS:
+        steep = ground.planes[int(slack.argmin())]
+        corner = np.where(steep > 0, ground.core.high, ground.core.low)
+        return own_setting(problem.study, levels, corner)
+    return None
+
+
+def _inside(box: Box, core: Box, x: FloatArray, room: Box) -> Box:
+    """Draw a box in by the room, but not inside its core."""
+    return Box(
+        np.minimum(box.low + (x - room.low), core.low),
+        np.maximum(box.high - (room.high - x), core.high),
+    )
 
 
 def _must_give(problem: Problem, ground: Ground) -> tuple[str, ...]:
@@ -109,7 +179,7 @@ def _must_give(problem: Problem, ground: Ground) -> tuple[str, ...]:
         worst = worst_over(row, ground.core)
         if row.limit is None:
             if worst < HOLDS:
-                sentences.append("The room reaches beyond what the runs explored.")
+                sentences.append("The box to be held reaches beyond what the runs explored.")
             continue
         seen[row.limit] = min(worst, seen.get(row.limit, np.inf))
     for limit, worst in seen.items():
@@ -121,13 +191,13 @@ def _must_give(problem: Problem, ground: Ground) -> tuple[str, ...]:
         counted = "batch sd" if guarding.in_batch_sd else "% of the response's range"
         sentences.append(
             f"{side_text(side.response, side.side, side.value, unit)} is broken by"
-            f" {-worst:.2g} {counted} at the worst place of the room: a looser limit, a tighter"
-            " tolerance or more runs must give."
+            f" {-worst:.2g} {counted} at the worst place of the box to be held: a looser limit, a"
+            " tighter tolerance or more runs must give."
         )
     for slack, name in zip(plane_slack(ground, ground.core), problem.region.names, strict=True):
         if slack < -1e-9:
-            sentences.append(f"The room reaches beyond {name}.")
-    return tuple(sentences) or ("The room of the setting could not be proven to hold.",)
+            sentences.append(f"The box to be held reaches beyond {name}.")
+    return tuple(sentences) or ("The box to be held could not be proven.",)
 
 
 def _row_name(problem: Problem, limit: int | None) -> str:

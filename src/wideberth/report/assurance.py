@@ -12,7 +12,7 @@ from wideberth.report.drift_words import (
 )
 from wideberth.report.numbers import format_range, format_setting, format_value, named, with_unit
 from wideberth.report.ridge_figure import draw_ridge
-from wideberth.report.rows import region_header, region_row, wander_row, window_row
+from wideberth.report.rows import WINDOW_HEADER, region_header, region_row, wander_row, window_row
 from wideberth.report.shares_figure import draw_shares
 from wideberth.report.style import to_svg
 from wideberth.report.wording import (
@@ -27,6 +27,8 @@ from wideberth.report.wording import (
     together_sentences,
     window_sentence,
 )
+
+_NESTED = "Three nested ranges a factor, and what stops the window"
 
 
 def assurance(record: Record) -> list[Block]:
@@ -117,8 +119,7 @@ def _window(record: Record) -> list[Block]:
     if box.status == "none":
         return [*blocks, Bullets("What must give", box.must_give, tone="doubt")]
     rows = tuple(window_row(box, factor) for factor in record.study.numeric)
-    header = ("Factor", "Window", "Stopped below by", "Stopped above by", "Taken alone")
-    return [*blocks, Table("The window and what stops it", header, rows), Paragraph(SINGLY_WARNING)]
+    return [*blocks, Table(_NESTED, WINDOW_HEADER, rows), Paragraph(SINGLY_WARNING)]
 
 
 def _wandering(record: Record) -> list[Block]:

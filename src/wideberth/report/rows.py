@@ -13,12 +13,24 @@ from wideberth.report.wording import batches_in_100, ends_words, setting_words, 
 from wideberth.study.records import NumericFactor, Study
 from wideberth.uncertainty.records import OptimumRegion, Uncertainty
 
+WINDOW_HEADER = (
+    "Factor",
+    "Hold within",
+    "Act at",
+    "Never beyond",
+    "Stopped below by",
+    "Above by",
+    "Taken alone",
+)
+
 
 def window_row(box: Window, factor: NumericFactor) -> tuple[str, ...]:
-    """Write one factor of a window: name, window, what stops it below and above, taken alone."""
+    """Write one factor of a window: its three nested ranges, what stops it, taken alone."""
     stop = box.stopped_by[factor.name]
     return (
         named(factor.name, factor.unit),
+        ends_words(factor, box.hold[factor.name]),
+        ends_words(factor, box.act_at[factor.name], inwards=True),
         ends_words(factor, box.settable[factor.name], inwards=True),
         stop.low or "nothing",
         stop.high or "nothing",
