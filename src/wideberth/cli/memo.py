@@ -3,44 +3,71 @@
 from __future__ import annotations
 
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import click
 
 from wideberth.cli.frame import guarded, json_option, quiet_option, seed_option, study_argument
+from wideberth.errors import refusal
+
+if TYPE_CHECKING:
+    from wideberth.report.memo import Format
 
 
 @click.command("memo")
 @study_argument
 @click.option("--out", type=click.Path(), help="Folder to write to, instead of the study's own.")
+@click.option(
+    "--format",
+    "formats",
+    default="html",
+    show_default=True,
+    help="What to write, separated by commas: html, pdf, docx.",
+)
 @seed_option
 @json_option
 @quiet_option
 @guarded
 def command(
-    study_dir: str, *, out: str | None, seed: int | None, as_json: bool, quiet: bool
+    study_dir: str, *, out: str | None, formats: str, seed: int | None, as_json: bool, quiet: bool
 ) -> int:
-    """Run all steps and write memo.html and record.json.
+    """Run all steps and write the memo and record.json.
 
-    Example: wideberth memo my-study
+    Example: wideberth memo my-study --format html,pdf,docx
     """
-    from wideberth.chain.as_json import dumps, record_json
+    from wideberth.chain.as_json import dumps
     from wideberth.chain.record import build_record
     from wideberth.cli.progress import ProgressLine
-    from wideberth.report.memo import write_memo
+    from wideberth.report.memo import full_record, write_memo
     from wideberth.report.wording import status_sentence
     from wideberth.study.reading import read_study
 
+    wanted = _formats(formats)
     study = read_study(study_dir)
     progress = ProgressLine(quiet=quiet or as_json)
     record = build_record(study, seed=seed, progress=progress)
     progress("memo", 0.97)
-    paths = write_memo(record, Path(out) if out else study.directory)
+    paths = write_memo(record, Path(out) if out else study.directory, wanted)
     progress.close()
     status = record.choice.status
     if as_json:
-        click.echo(dumps(record_json(record)), nl=False)
+        click.echo(dumps(full_record(record)), nl=False)
     else:
         for path in paths:
             click.echo(f"wrote {path}")
         click.echo(f"{status}: {status_sentence(record.choice)}")
     return 0 if status == "met" else 3
+
+
+def _formats(text: str) -> tuple[Format, ...]:
+    from wideberth.report.memo import FORMATS
+
+    asked = [part.strip().lower() for part in text.split(",")]
+    for name in asked:
+        if name not in FORMATS:
+            raise refusal(
+                f"'{name}' is no format of the memo",
+                "--format",
+                f"choose from {', '.join(FORMATS)}",
+            )
+    return tuple(name for name in FORMATS if name in asked)

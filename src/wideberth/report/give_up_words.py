@@ -5,7 +5,7 @@ from __future__ import annotations
 from wideberth.decide.give_ups import Change, GiveUp
 from wideberth.report.numbers import format_value, with_unit
 
-_NOTHING = 5e-5
+WORTH_SAYING = 5e-5
 _COUNTS = 1e-3
 
 
@@ -23,7 +23,7 @@ def step_words(one: GiveUp, *, tighter: bool) -> str:
     change = one.tighter if tighter else one.looser
     if change.desirability is None:
         return "no setting holds the limits any more"
-    if abs(change.desirability) < _NOTHING:
+    if abs(change.desirability) < WORTH_SAYING:
         return "changes nothing"
     moved = _moved(one, change)
     return f"D {change.desirability:+.4f}{f', {moved}' if moved else ''}"

@@ -11,6 +11,8 @@ import matplotlib as mpl
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
+from wideberth.report.fonts import families
+
 INK = "#22272e"
 FAINT = "#8a929b"
 BLUE = "#1f5a94"
@@ -22,7 +24,7 @@ WIDTH = 6.7
 
 # the library types every key of its settings apart; ours are plain texts and numbers
 _SETTINGS: Any = {
-    "font.family": "DejaVu Sans",
+    "font.family": list(families()),
     "font.size": 8.0,
     "axes.titlesize": 8.5,
     "axes.labelsize": 8.0,

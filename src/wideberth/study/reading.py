@@ -66,6 +66,7 @@ def read_study(directory: Path | str) -> Study:
         today=dict(tables.today),
         runs=sheet.runs,
         sha256=hashes,
+        stage=tables.memo.stage,
         notes=sheet.notes,
     )
 

@@ -216,6 +216,8 @@ class Study:
     """Hash of each input file, by name, and of the whole study under ``"study"``."""
     notes: tuple[Finding, ...] = ()
     """What reading found worth saying (a default taken, an empty cell)."""
+    stage: Literal["draft", "final"] = "draft"
+    """What the memo is, as its owner says."""
 
     @property
     def numeric(self) -> tuple[NumericFactor, ...]:

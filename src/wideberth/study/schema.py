@@ -124,6 +124,12 @@ class BlocksTable(_Table):
     future: Literal["recur", "sample"]
 
 
+class MemoTable(_Table):
+    """``[memo]``."""
+
+    stage: Literal["draft", "final"] = "draft"
+
+
 class StudyFile(_Table):
     """The whole file."""
 
@@ -136,7 +142,7 @@ class StudyFile(_Table):
     blocks: BlocksTable | None = None
     today: dict[str, Number | str] = Field(default_factory=dict)
     plan: dict[str, Any] = Field(default_factory=dict)
-    memo: dict[str, Any] = Field(default_factory=dict)
+    memo: MemoTable = MemoTable()
 
 
 _TABLES: dict[str, type[BaseModel]] = {
@@ -151,6 +157,7 @@ _TABLES: dict[str, type[BaseModel]] = {
     "region": RegionTable,
     "region.keep": RadiusTable,
     "blocks": BlocksTable,
+    "memo": MemoTable,
     "": StudyFile,
 }
 
