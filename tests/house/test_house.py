@@ -42,6 +42,7 @@ COMMANDS = (
     "window",
     "robustness",
     "memo",
+    "replay",
 )
 HEAVY = ("numpy", "scipy", "pandas", "statsmodels", "cvxpy", "matplotlib", "pydantic", "jinja2")
 PRESENTING = ("matplotlib", "click", "jinja2")

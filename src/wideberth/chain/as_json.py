@@ -119,6 +119,7 @@ def record_json(record: Record) -> Json:
         "version": record.version,
         "packages": dict(record.packages),
         "seed": record.seed,
+        "draws": record.n_draws,
         "sha256": dict(study.sha256),
         "study": _study(study),
         "doubts": [asdict(finding) for finding in record.doubts],
@@ -180,7 +181,7 @@ def _study(study: Study) -> Json:
     content = {
         field.name: _plain(getattr(study, field.name))
         for field in fields(study)
-        if field.name not in ("directory", "sha256", "notes")
+        if field.name not in ("directory", "sha256")
     }
     for stated, response in zip(content["responses"], study.responses, strict=True):
         if response.formula is not None:
