@@ -121,7 +121,7 @@ def record_json(record: Record) -> Json:
         "seed": record.seed,
         "draws": record.n_draws,
         "sha256": dict(study.sha256),
-        "study": _study(study),
+        "study": study_json(study),
         "doubts": [asdict(finding) for finding in record.doubts],
         "fit": {
             model.response: {**_model(model), **_covariance(model)}
@@ -177,7 +177,8 @@ def _covariance(model: Model) -> Json:
     return {"unscaled_covariance": _plain(model.covariance)}
 
 
-def _study(study: Study) -> Json:
+def study_json(study: Study) -> Json:
+    """Give the study as it was read, enough to compute everything again."""
     content = {
         field.name: _plain(getattr(study, field.name))
         for field in fields(study)

@@ -8,7 +8,7 @@ from dataclasses import fields, is_dataclass
 from decimal import Decimal
 from pathlib import Path
 from types import UnionType
-from typing import Any, Union, get_args, get_origin, get_type_hints
+from typing import Any, Literal, Union, get_args, get_origin, get_type_hints
 
 import numpy as np
 
@@ -79,6 +79,21 @@ def _built(kind: Any, value: Any) -> Any:
         return tuple(_built(one, item) for one, item in zip(kinds, value, strict=True))
     if origin is Mapping:
         return {key: _built(inner[1], item) for key, item in value.items()}
+    return _checked(kind, value)
+
+
+def _checked(kind: Any, value: Any) -> Any:
+    """Take a plain value only when it is of its kind."""
+    words = get_args(kind) if get_origin(kind) is Literal else ()
+    allowed = (float, int) if kind in (float, Decimal) else kind
+    if words and value not in words:
+        message = f"'{value}' is none of {', '.join(map(str, words))}"
+        raise ValueError(message)
+    if kind in (float, Decimal, int, str, bool) and (
+        not isinstance(value, allowed) or isinstance(value, bool) is not (kind is bool)
+    ):
+        message = f"'{value}' is no {kind.__name__.lower()}"
+        raise TypeError(message)
     return Decimal(repr(value)) if kind is Decimal else value
 
 
@@ -86,8 +101,12 @@ def _built_record(kind: Any, value: Any) -> Any:
     if kind is Formula:
         return Formula({_names(term): number for term, number in value.items()})
     hints = get_type_hints(kind)
-    stated = (field.name for field in fields(kind) if field.name in value)
-    return kind(**{name: _built(hints[name], value[name]) for name in stated})
+    # a formula is written only where there is one
+    odd = (set(value) ^ {field.name for field in fields(kind)}) - {"formula"}
+    if odd:
+        message = f"'{min(odd)}' of {kind.__name__} is missing or unknown"
+        raise ValueError(message)
+    return kind(**{name: _built(hints[name], part) for name, part in value.items()})
 
 
 def _built_union(kinds: tuple[Any, ...], value: Any) -> Any:
@@ -97,8 +116,8 @@ def _built_union(kinds: tuple[Any, ...], value: Any) -> Any:
     others = [kind for kind in kinds if kind is not type(None)]
     records = [kind for kind in others if is_dataclass(kind)]
     if len(records) > 1:
-        matching = (k for k in records if {f.name for f in fields(k)} == set(value))
-        return _built(next(matching), value)
+        matching = [k for k in records if {f.name for f in fields(k)} == set(value)]
+        return _built(matching[0] if matching else records[0], value)
     return _built(others[0], value) if len(others) == 1 else value
 
 

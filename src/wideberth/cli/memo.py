@@ -36,6 +36,7 @@ def command(
     Example: wideberth memo my-study --format html,pdf,docx
     """
     from wideberth.chain.as_json import dumps
+    from wideberth.chain.files import check_writable
     from wideberth.chain.record import build_record
     from wideberth.cli.progress import ProgressLine
     from wideberth.report.memo import full_record, write_memo
@@ -44,10 +45,12 @@ def command(
 
     wanted = _formats(formats)
     study = read_study(study_dir)
+    folder = Path(out) if out else study.directory
+    check_writable(folder)
     progress = ProgressLine(quiet=quiet or as_json)
     record = build_record(study, seed=seed, progress=progress)
     progress("memo", 0.97)
-    paths = write_memo(record, Path(out) if out else study.directory, wanted)
+    paths = write_memo(record, folder, wanted)
     progress.close()
     status = record.choice.status
     if as_json:

@@ -1,9 +1,8 @@
-"""Records that several tests of the memo read; each is computed once."""
+"""Studies whose records the tests of memo and replay read: small, and as nasty as names can be."""
 
 from dataclasses import replace
 
 import numpy as np
-import pytest
 
 from support.build import central_composite, less, make_study, more
 from wideberth.chain.record import build_record
@@ -25,7 +24,6 @@ NASTY = (
 )
 
 
-@pytest.fixture(scope="session")
 def nasty_record():
     """Twelve responses whose names look like markup, two factors alike, a title that attacks."""
     x = central_composite(2)
@@ -46,9 +44,8 @@ def nasty_record():
     return build_record(study, n_draws=300)
 
 
-@pytest.fixture(scope="session")
 def small_record():
-    """Two factors, two responses, today's setting, steps and a categorical factor."""
+    """Two factors, two measured responses and an exact one, today's setting, tolerances, steps."""
     x = central_composite(2)
     rng = np.random.default_rng(3)
     y = 20 + 3 * x[:, 0] - (x**2).sum(axis=1) + 0.2 * rng.standard_normal(len(x))
