@@ -360,7 +360,9 @@ def _provenance(record: Record) -> list[Block]:
         Heading(3, "Provenance"),
         Paragraph(
             "The same study, seed and version give the same bytes; record.json beside this memo"
-            " carries every number at full precision."
+            " carries every number at full precision, the study as it was read, and these words."
+            " Its hash stands at the foot of every page. 'wideberth replay record.json' computes"
+            " everything again and names the first number that differs."
         ),
         Table("Inputs and versions", ("Item", "Hash or version"), tuple(rows)),
     ]
