@@ -16,7 +16,7 @@ from wideberth.chain.as_json import Json
 from wideberth.errors import Fault, InputError
 from wideberth.study.records import Formula, Study
 
-_NEEDED = ("version", "packages", "seed", "draws", "sha256", "study", "printed")
+_NEEDED = ("version", "packages", "seed", "draws", "sha256", "study", "compared", "printed")
 
 
 def read_record(path: Path) -> Json:
@@ -31,12 +31,14 @@ def read_record(path: Path) -> Json:
         content = json.loads(path.read_bytes())
     except OSError as error:
         reason = (error.strerror or "it cannot be read").lower()
-        raise _refused(f"{path.name}: {reason}", path) from error
+        raise refused_record(f"{path.name}: {reason}", path) from error
     except ValueError as error:
-        raise _refused(f"{path.name} is not JSON ({error})", path) from error
+        raise refused_record(f"{path.name} is not JSON ({error})", path) from error
     missing = [key for key in _NEEDED if not isinstance(content, dict) or key not in content]
     if missing:
-        raise _refused(f"{path.name} has no '{missing[0]}', so it is no record of a memo", path)
+        raise refused_record(
+            f"{path.name} has no '{missing[0]}', so it is no record of a memo", path
+        )
     record: Json = content
     return record
 
@@ -57,11 +59,12 @@ def study_of(content: Json, path: Path) -> Study:
         }
         study: Study = _built(Study, stated)
     except (KeyError, TypeError, ValueError, AttributeError, ArithmeticError) as error:
-        raise _refused(f"the study in {path.name} is not whole ({error})", path) from error
+        raise refused_record(f"the study in {path.name} is not whole ({error})", path) from error
     return study
 
 
-def _refused(what: str, path: Path) -> InputError:
+def refused_record(what: str, path: Path) -> InputError:
+    """Word why a file is no record to work with."""
     return InputError([Fault(what, str(path), "give a record.json that 'wideberth memo' wrote")])
 
 

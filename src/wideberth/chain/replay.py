@@ -55,8 +55,8 @@ class Replay:
 def compare(recorded: Json, now: Json, folder: Path) -> Replay:
     """Compare a record with the same computed now; ``folder`` is where its inputs should lie."""
     one, other = _counted(recorded), _counted(now)
-    bits = next(_differences(one, other, "", exact=True), None)
-    numbers = next(_differences(one, other, "", exact=False), None)
+    bits = next(differences(one, other, "", exact=True), None)
+    numbers = next(differences(one, other, "", exact=False), None)
     outcome: Literal["same bits", "same printed digits", "differs"] = "differs"
     if bits is None:
         outcome = "same bits"
@@ -65,7 +65,7 @@ def compare(recorded: Json, now: Json, folder: Path) -> Replay:
     return Replay(
         outcome,
         numbers or bits,
-        tuple(_differences(_apart(recorded), _apart(now), "", exact=True)),
+        tuple(differences(_apart(recorded), _apart(now), "", exact=True)),
         _inputs(recorded["sha256"], folder),
     )
 
@@ -78,15 +78,15 @@ def _apart(record: Json) -> Json:
     return {key: record.get(key) for key in _APART}
 
 
-def _differences(one: Any, other: Any, place: str, *, exact: bool) -> Iterator[Difference]:
-    """Go through both in the order of the record."""
+def differences(one: Any, other: Any, place: str, *, exact: bool) -> Iterator[Difference]:
+    """Go through two pieces of JSON in their own order; numbers to the bit, or to 1e-9."""
     if isinstance(one, dict) and isinstance(other, dict):
         for key in dict.fromkeys([*one, *other]):
             where = f"{place}.{key}" if place else str(key)
-            yield from _differences(one.get(key), other.get(key), where, exact=exact)
+            yield from differences(one.get(key), other.get(key), where, exact=exact)
     elif isinstance(one, list) and isinstance(other, list) and len(one) == len(other):
         for i, (left, right) in enumerate(zip(one, other, strict=True)):
-            yield from _differences(left, right, f"{place}[{i}]", exact=exact)
+            yield from differences(left, right, f"{place}[{i}]", exact=exact)
     elif not _same(one, other, exact=exact):
         yield Difference(place, one, other)
 

@@ -91,6 +91,15 @@ def record_schema() -> Json:
         "priorities": optional(Priorities),
         "frontier": optional(Frontier),
         "maps": of(tuple[FactorMap, ...]),
+        "compared": {
+            "anyOf": [
+                _object(
+                    {"sha256": _TEXT, "changes": {"type": "array", "items": _change()}},
+                    "What changed since an earlier record, which had this hash.",
+                ),
+                {"type": "null"},
+            ]
+        },
         "printed": {
             "type": "array",
             "items": _TEXT,
@@ -103,6 +112,12 @@ def record_schema() -> Json:
         **_object(parts, "Every number of the memo at full precision, and what it was made from."),
         "$defs": dict(sorted(defs.items())),
     }
+
+
+def _change() -> Json:
+    anything: Json = {}
+    properties = {"part": _TEXT, "what": _TEXT, "before": anything, "now": anything}
+    return _object(properties, "One thing that is not what it was.")
 
 
 def _model(of: Any) -> Json:

@@ -24,18 +24,32 @@ if TYPE_CHECKING:
     show_default=True,
     help="What to write, separated by commas: html, pdf, docx.",
 )
+@click.option(
+    "--compare",
+    "earlier",
+    type=click.Path(),
+    help="Also say what changed since this earlier record.json, and why.",
+)
 @seed_option
 @json_option
 @quiet_option
 @guarded
 def command(
-    study_dir: str, *, out: str | None, formats: str, seed: int | None, as_json: bool, quiet: bool
+    study_dir: str,
+    *,
+    out: str | None,
+    formats: str,
+    earlier: str | None,
+    seed: int | None,
+    as_json: bool,
+    quiet: bool,
 ) -> int:
     """Run all steps and write the memo and record.json.
 
     Example: wideberth memo my-study --format html,pdf,docx
     """
-    from wideberth.chain.as_json import dumps
+    from wideberth.chain.as_json import dumps, record_json
+    from wideberth.chain.changes import compared_with, read_earlier
     from wideberth.chain.files import check_writable
     from wideberth.chain.record import build_record
     from wideberth.cli.progress import ProgressLine
@@ -47,14 +61,16 @@ def command(
     study = read_study(study_dir)
     folder = Path(out) if out else study.directory
     check_writable(folder)
+    before = None if earlier is None else read_earlier(Path(earlier))
     progress = ProgressLine(quiet=quiet or as_json)
     record = build_record(study, seed=seed, progress=progress)
     progress("memo", 0.97)
-    paths = write_memo(record, folder, wanted)
+    compared = None if before is None else compared_with(*before, record_json(record))
+    paths = write_memo(record, folder, wanted, compared=compared)
     progress.close()
     status = record.choice.status
     if as_json:
-        click.echo(dumps(full_record(record)), nl=False)
+        click.echo(dumps(full_record(record, compared)), nl=False)
     else:
         for path in paths:
             click.echo(f"wrote {path}")

@@ -55,7 +55,11 @@ def _as_printed_then(anew: Record, recorded: Json) -> Json:
     from wideberth.report.memo import full_record
 
     then = replace(anew, version=recorded["version"], packages=recorded["packages"])
-    return {**full_record(then), "version": anew.version, "packages": dict(anew.packages)}
+    return {
+        **full_record(then, recorded["compared"]),
+        "version": anew.version,
+        "packages": dict(anew.packages),
+    }
 
 
 def _show(answer: Replay) -> None:

@@ -92,6 +92,8 @@ class Memo:
     blocks: tuple[Block, ...]
 
 
+LONG_WORD = re.compile(r"(\S{16})(?=\S)")
+"""A stretch of a word after which a line may break, where the page would be left otherwise."""
 _MOST_COLUMNS = 9
 # nothing prints these, some formats cannot hold them, and the last ones turn the text around
 _UNPRINTABLE = re.compile("[\x00-\x1f\x7f-\x9f\ud800-\udfff\ufffe\uffff\u202a-\u202e\u2066-\u2069]")

@@ -7,6 +7,7 @@ from wideberth.decide.priorities import FARTHEST
 from wideberth.fit.records import Model
 from wideberth.report.assurance import assurance
 from wideberth.report.blocks import Block, Bullets, Drawing, Heading, PageBreak, Paragraph, Table
+from wideberth.report.closing import closing
 from wideberth.report.figures import draw_line, draw_map, draw_margins, draw_residuals
 from wideberth.report.frontier_figure import draw_frontier
 from wideberth.report.give_up_words import bound_words, step_words
@@ -51,6 +52,7 @@ def evidence(record: Record) -> tuple[Block, ...]:
         *_goals(record),
         *_models(record),
         *_geometry(record),
+        *closing(record),
         Heading(3, "Methods and sources"),
         Bullets("", tuple(_METHODS.strip().splitlines())),
         *_provenance(record),

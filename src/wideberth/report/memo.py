@@ -15,6 +15,7 @@ from wideberth.report.blocks import Block, Memo, prepared, printable, texts_of
 from wideberth.report.evidence import evidence
 from wideberth.report.page import memo_page
 from wideberth.report.page_one import page_one
+from wideberth.report.since import since
 from wideberth.report.typeset import memo_pdf
 from wideberth.report.word import memo_docx
 
@@ -27,14 +28,17 @@ _WRITERS: Mapping[Format, Callable[[Memo], bytes]] = {
 }
 
 
-def memo_of(record: Record) -> Memo:
-    """Give the memo's content, whatever format is written, with the hash of its record in it."""
-    return _with_data(record)[0]
+def memo_of(record: Record, compared: Json | None = None) -> Memo:
+    """Give the memo's content, whatever format is written, with the hash of its record in it.
+
+    ``compared`` is what `chain.changes.compared_with` found against an earlier record.
+    """
+    return _with_data(record, compared)[0]
 
 
-def full_record(record: Record) -> Json:
+def full_record(record: Record, compared: Json | None = None) -> Json:
     """Give what ``record.json`` holds: all numbers, and the memo's words as they are printed."""
-    return _full(record, _memo(record, evidence(record), ""))
+    return _full(record, compared, _memo(record, _behind(record, compared), ""))
 
 
 def memo_html(record: Record) -> str:
@@ -43,7 +47,11 @@ def memo_html(record: Record) -> str:
 
 
 def write_memo(
-    record: Record, directory: Path, formats: Iterable[Format] = ("html",)
+    record: Record,
+    directory: Path,
+    formats: Iterable[Format] = ("html",),
+    *,
+    compared: Json | None = None,
 ) -> tuple[Path, ...]:
     """Write the memo in the formats asked for and ``record.json`` into a folder, all or none.
 
@@ -52,7 +60,7 @@ def write_memo(
     InputError
         When the folder cannot be written.
     """
-    memo, data = _with_data(record)
+    memo, data = _with_data(record, compared)
     wanted = set(formats)
     files = {
         directory / f"memo.{name}": write(memo)
@@ -64,15 +72,20 @@ def write_memo(
     return tuple(files)
 
 
-def _with_data(record: Record) -> tuple[Memo, bytes]:
+def _with_data(record: Record, compared: Json | None) -> tuple[Memo, bytes]:
     """Give the memo and the bytes of ``record.json``, whose hash the memo carries."""
-    behind = evidence(record)
-    data = dumps_record(_full(record, _memo(record, behind, ""))).encode("utf-8")
+    behind = _behind(record, compared)
+    data = dumps_record(_full(record, compared, _memo(record, behind, ""))).encode("utf-8")
     return _memo(record, behind, hashlib.sha256(data).hexdigest()), data
 
 
-def _full(record: Record, memo: Memo) -> Json:
-    return {**record_json(record), "printed": list(texts_of(memo.blocks))}
+def _behind(record: Record, compared: Json | None) -> tuple[Block, ...]:
+    return (*evidence(record), *since(compared))
+
+
+def _full(record: Record, compared: Json | None, memo: Memo) -> Json:
+    printed = list(texts_of(memo.blocks))
+    return {**record_json(record), "compared": compared, "printed": printed}
 
 
 def _memo(record: Record, behind: Iterable[Block], digest: str) -> Memo:

@@ -15,12 +15,11 @@ from typing import Any
 
 import typst
 
-from wideberth.report.blocks import Block, Drawing, Memo, Table, with_texts
+from wideberth.report.blocks import LONG_WORD, Block, Drawing, Memo, Table, with_texts
 from wideberth.report.fonts import drawable, families, folders
 
 _STANDARDS = ["a-2a", "ua-1"]
 _DOTS_PER_INCH = 200.0
-_LONGEST_WORD = 16
 # PDF/A wants a date, and the clock's would change the bytes
 _UNDATED = (2000, 1, 1)
 _WIDE = 46
@@ -98,4 +97,4 @@ def _widths(table: Table) -> list[int]:
 
 def _breakable(text: str) -> str:
     """Let a very long word break, so that it stays on the page."""
-    return re.sub(rf"(\S{{{_LONGEST_WORD}}})(?=\S)", "\\1\u200b", text)
+    return LONG_WORD.sub("\\1\u200b", text)
