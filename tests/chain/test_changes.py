@@ -9,7 +9,7 @@ from wideberth.chain.as_json import dumps_record
 from wideberth.chain.changes import changes, compared_with, read_earlier
 from wideberth.errors import InputError
 from wideberth.report.blocks import texts_of
-from wideberth.report.memo import full_record, memo_of
+from wideberth.report.memo import Aside, full_record, memo_of
 from wideberth.report.since import since
 
 
@@ -26,7 +26,7 @@ def _earlier(now, change):
 
 def test_an_unchanged_record_has_no_changes(now):
     assert changes(now, now) == ()
-    (heading, said) = since(compared_with(now, "ab" * 32, now))
+    (heading, said) = since(compared_with(now, "ab" * 32, now), None)
     assert heading.text.startswith("What changed")
     assert said.text == "Held against the record abababababababab, nothing changed."
 
@@ -104,11 +104,13 @@ def test_the_memo_says_why_the_answer_changed(now, small_record):
         record["recommend"]["setpoint"]["f0"] = 0.5
 
     compared = compared_with(_earlier(now, differently), "0" * 64, now)
-    texts = list(texts_of(memo_of(small_record, compared).blocks))
+    aside = Aside(compared, 3)
+    texts = list(texts_of(memo_of(small_record, aside).blocks))
     assert any("the answer changed, because of goals and limits." in text for text in texts)
+    assert any("written with 3 different sets" in text for text in texts)
     at = texts.index("z limit high")
     assert texts[at - 1 : at + 3] == ["goals and limits", "z limit high", "12.5", "13"]
-    assert full_record(small_record, compared)["compared"] == compared
+    assert full_record(small_record, aside)["compared"] == compared
 
 
 def test_an_earlier_record_must_be_whole(now, tmp_path):

@@ -1,6 +1,7 @@
 """The shell door: exit codes, JSON, refusals in words, the whole journey, the same bytes."""
 
 import json
+import shutil
 from pathlib import Path
 
 import jsonschema
@@ -134,14 +135,17 @@ def test_an_answer_that_is_not_met_exits_3(tmp_path):
 
 
 def test_the_memo_in_all_formats_and_its_record_computed_again(tmp_path):
-    made = _run("memo", DEMO, "--out", tmp_path, "--format", "docx,pdf, HTML", "--quiet")
+    study, out = shutil.copytree(DEMO, tmp_path / "study"), tmp_path / "out"
+    made = _run("memo", study, "--out", out, "--format", "docx,pdf, HTML", "--quiet")
     assert made.exit_code == 0
     names = ("memo.html", "memo.pdf", "memo.docx", "record.json")
-    assert sorted(path.name for path in tmp_path.iterdir()) == sorted(names)
-    record = json.loads((tmp_path / "record.json").read_text(encoding="utf-8"))
+    assert sorted(path.name for path in out.iterdir()) == sorted(names)
+    assert (study / "history.jsonl").read_text(encoding="utf-8").count("\n") == 1
+    record = json.loads((out / "record.json").read_text(encoding="utf-8"))
+    assert record["tried"] == 1
     assert record["recommend"]["status"] == "met"
     jsonschema.validate(record, SCHEMA)
-    again = _run("replay", tmp_path / "record.json", "--study", DEMO, "--quiet")
+    again = _run("replay", out / "record.json", "--study", study, "--quiet")
     assert again.exit_code == 0
     assert "The same bits" in again.stdout
     assert "Input runs.csv: as recorded" in again.stdout
@@ -152,6 +156,15 @@ def test_an_unknown_format_is_said_before_anything_is_computed(tmp_path):
     assert result.exit_code == 2
     assert "choose from html, pdf, docx" in result.stderr
     assert list(tmp_path.iterdir()) == []
+
+
+def test_a_history_changed_by_hand_is_said_before_anything_is_computed(tmp_path):
+    folder = write_study(tmp_path / "study")
+    (folder / "history.jsonl").write_text("{}\n", encoding="utf-8")
+    result = _run("memo", folder, "--quiet")
+    assert result.exit_code == 2
+    assert "history.jsonl line 1" in result.stderr
+    assert not (folder / "memo.html").exists()
 
 
 @pytest.mark.parametrize("text", [None, "", "[]", "{}", '{"study": 1}', "\xff"])

@@ -16,7 +16,17 @@ from wideberth.chain.as_json import Json
 from wideberth.errors import Fault, InputError
 from wideberth.study.records import Formula, Study
 
-_NEEDED = ("version", "packages", "seed", "draws", "sha256", "study", "compared", "printed")
+_NEEDED = (
+    "version",
+    "packages",
+    "seed",
+    "draws",
+    "sha256",
+    "study",
+    "compared",
+    "tried",
+    "printed",
+)
 
 
 def read_record(path: Path) -> Json:

@@ -100,6 +100,10 @@ def record_schema() -> Json:
                 {"type": "null"},
             ]
         },
+        "tried": {
+            "type": ["integer", "null"],
+            "description": "Different sets of goals, limits and choices that memos had so far.",
+        },
         "printed": {
             "type": "array",
             "items": _TEXT,

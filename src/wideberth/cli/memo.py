@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -12,6 +13,7 @@ from wideberth.errors import refusal
 
 if TYPE_CHECKING:
     from wideberth.report.memo import Format
+    from wideberth.study.records import Study
 
 
 @click.command("memo")
@@ -53,7 +55,7 @@ def command(
     from wideberth.chain.files import check_writable
     from wideberth.chain.record import build_record
     from wideberth.cli.progress import ProgressLine
-    from wideberth.report.memo import full_record, write_memo
+    from wideberth.report.memo import Aside, full_record, write_memo
     from wideberth.report.wording import status_sentence
     from wideberth.study.reading import read_study
 
@@ -62,20 +64,34 @@ def command(
     folder = Path(out) if out else study.directory
     check_writable(folder)
     before = None if earlier is None else read_earlier(Path(earlier))
+    tried, history = _history(study, seed)
     progress = ProgressLine(quiet=quiet or as_json)
     record = build_record(study, seed=seed, progress=progress)
     progress("memo", 0.97)
     compared = None if before is None else compared_with(*before, record_json(record))
-    paths = write_memo(record, folder, wanted, compared=compared)
+    aside = Aside(compared, tried)
+    paths = write_memo(record, folder, wanted, aside=aside, beside=history)
     progress.close()
     status = record.choice.status
     if as_json:
-        click.echo(dumps(full_record(record, compared)), nl=False)
+        click.echo(dumps(full_record(record, aside)), nl=False)
     else:
         for path in paths:
             click.echo(f"wrote {path}")
         click.echo(f"{status}: {status_sentence(record.choice)}")
     return 0 if status == "met" else 3
+
+
+def _history(study: Study, seed: int | None) -> tuple[int | None, dict[Path, bytes]]:
+    """Count what was tried, and give the history to write; nothing where it cannot be kept."""
+    from wideberth.chain.history import FILE, read_history, tried_with
+
+    past = read_history(study.directory)
+    if not os.access(study.directory, os.W_OK):
+        click.echo(f"{study.directory} cannot be written, so no history is kept", err=True)
+        return None, {}
+    tried, history = tried_with(study, study.seed if seed is None else seed, past)
+    return tried, {study.directory / FILE: history}
 
 
 def _formats(text: str) -> tuple[Format, ...]:

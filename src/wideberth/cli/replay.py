@@ -52,11 +52,12 @@ def command(record: str, *, study: str | None, as_json: bool, quiet: bool) -> in
 
 def _as_printed_then(anew: Record, recorded: Json) -> Json:
     """Give the new record with the old one's versions in its words, and its own beside them."""
-    from wideberth.report.memo import full_record
+    from wideberth.report.memo import Aside, full_record
 
+    aside = Aside(recorded["compared"], recorded["tried"])
     then = replace(anew, version=recorded["version"], packages=recorded["packages"])
     return {
-        **full_record(then, recorded["compared"]),
+        **full_record(then, aside),
         "version": anew.version,
         "packages": dict(anew.packages),
     }

@@ -5,6 +5,7 @@ from __future__ import annotations
 import datetime as dt
 import hashlib
 from collections.abc import Callable, Iterable, Mapping
+from dataclasses import asdict, dataclass
 from pathlib import Path
 from typing import Literal
 
@@ -28,17 +29,36 @@ _WRITERS: Mapping[Format, Callable[[Memo], bytes]] = {
 }
 
 
-def memo_of(record: Record, compared: Json | None = None) -> Memo:
+@dataclass(frozen=True, slots=True)
+class Aside:
+    """What a memo says of its own past.
+
+    Attributes
+    ----------
+    compared : mapping or None
+        What `chain.changes.compared_with` found against an earlier record.
+    tried : int or None
+        How many different sets of goals, limits and choices memos were written with so far.
+    """
+
+    compared: Json | None = None
+    tried: int | None = None
+
+
+NOTHING = Aside()
+
+
+def memo_of(record: Record, aside: Aside = NOTHING) -> Memo:
     """Give the memo's content, whatever format is written, with the hash of its record in it.
 
-    ``compared`` is what `chain.changes.compared_with` found against an earlier record.
+    ``aside`` is what the record cannot know from its study.
     """
-    return _with_data(record, compared)[0]
+    return _with_data(record, aside)[0]
 
 
-def full_record(record: Record, compared: Json | None = None) -> Json:
+def full_record(record: Record, aside: Aside = NOTHING) -> Json:
     """Give what ``record.json`` holds: all numbers, and the memo's words as they are printed."""
-    return _full(record, compared, _memo(record, _behind(record, compared), ""))
+    return _full(record, aside, _memo(record, _behind(record, aside), ""))
 
 
 def memo_html(record: Record) -> str:
@@ -51,16 +71,19 @@ def write_memo(
     directory: Path,
     formats: Iterable[Format] = ("html",),
     *,
-    compared: Json | None = None,
+    aside: Aside = NOTHING,
+    beside: Mapping[Path, bytes] | None = None,
 ) -> tuple[Path, ...]:
     """Write the memo in the formats asked for and ``record.json`` into a folder, all or none.
+
+    ``beside`` are other files to write in the same step.
 
     Raises
     ------
     InputError
         When the folder cannot be written.
     """
-    memo, data = _with_data(record, compared)
+    memo, data = _with_data(record, aside)
     wanted = set(formats)
     files = {
         directory / f"memo.{name}": write(memo)
@@ -68,24 +91,24 @@ def write_memo(
         if name in wanted
     }
     files[directory / "record.json"] = data
-    write_all(files)
+    write_all({**files, **(beside or {})})
     return tuple(files)
 
 
-def _with_data(record: Record, compared: Json | None) -> tuple[Memo, bytes]:
+def _with_data(record: Record, aside: Aside) -> tuple[Memo, bytes]:
     """Give the memo and the bytes of ``record.json``, whose hash the memo carries."""
-    behind = _behind(record, compared)
-    data = dumps_record(_full(record, compared, _memo(record, behind, ""))).encode("utf-8")
+    behind = _behind(record, aside)
+    data = dumps_record(_full(record, aside, _memo(record, behind, ""))).encode("utf-8")
     return _memo(record, behind, hashlib.sha256(data).hexdigest()), data
 
 
-def _behind(record: Record, compared: Json | None) -> tuple[Block, ...]:
-    return (*evidence(record), *since(compared))
+def _behind(record: Record, aside: Aside) -> tuple[Block, ...]:
+    return (*evidence(record), *since(aside.compared, aside.tried))
 
 
-def _full(record: Record, compared: Json | None, memo: Memo) -> Json:
+def _full(record: Record, aside: Aside, memo: Memo) -> Json:
     printed = list(texts_of(memo.blocks))
-    return {**record_json(record), "compared": compared, "printed": printed}
+    return {**record_json(record), **asdict(aside), "printed": printed}
 
 
 def _memo(record: Record, behind: Iterable[Block], digest: str) -> Memo:

@@ -8,8 +8,26 @@ from wideberth.chain.as_json import Json
 from wideberth.report.blocks import Block, Heading, Paragraph, Table
 
 
-def since(compared: Json | None) -> list[Block]:
-    """Write the part on changes, from the record's ``compared``; nothing without one."""
+def since(compared: Json | None, tried: int | None) -> list[Block]:
+    """Write what was tried before this memo, and what changed since an earlier record."""
+    return [*_tried(tried), *_changed(compared)]
+
+
+def _tried(tried: int | None) -> list[Block]:
+    if tried is None:
+        return []
+    sets = "1 set" if tried == 1 else f"{tried} different sets"
+    return [
+        Heading(3, "What was tried"),
+        Paragraph(
+            f"Memos of this study have been written with {sets} of goals, limits, model orders,"
+            " left-out runs, data and seed, this one included; history.jsonl in the study keeps"
+            " every one. The more were tried, the less one that looks good says."
+        ),
+    ]
+
+
+def _changed(compared: Json | None) -> list[Block]:
     if compared is None:
         return []
     lead = f"Held against the record {compared['sha256'][:16]}"
