@@ -25,11 +25,11 @@ def step_words(one: GiveUp, *, tighter: bool) -> str:
         return "no setting holds the limits any more"
     if abs(change.desirability) < WORTH_SAYING:
         return "changes nothing"
-    moved = _moved(one, change)
+    moved = moved_words(one, change)
     return f"D {change.desirability:+.4f}{f', {moved}' if moved else ''}"
 
 
-def _moved(one: GiveUp, change: Change) -> str:
+def moved_words(one: GiveUp, change: Change) -> str:
     """List the responses that move by more than a thousandth of the step's effect on anything."""
     parts = []
     for name, by in change.responses.items():

@@ -5,7 +5,7 @@ from __future__ import annotations
 from wideberth.chain.record import Record
 from wideberth.decide.records import Choice, Prediction, Status
 from wideberth.report.blocks import Block, Bullets, Heading, Paragraph, SignOff, Table
-from wideberth.report.give_up_words import WORTH_SAYING, bound_words, step_words
+from wideberth.report.give_up_words import WORTH_SAYING, bound_words, moved_words
 from wideberth.report.numbers import (
     decimals_of,
     format_range,
@@ -69,7 +69,7 @@ def page_one(record: Record, digest: str = "") -> tuple[Block, ...]:
             with_unit(f"{name} {difference_words(one)}", today.predictions[name].unit)
             for name, one in today.differences.items()
         )
-        verdict_words = " ".join(today_sentences(record.uncertainty)[:2])
+        verdict_words = " ".join(today_sentences(record.uncertainty)[: 2 if today.broken else 1])
         blocks.append(Paragraph(f"Against today: {changes}. {verdict_words}"))
     blocks += _given_up(record)
     blocks += [
@@ -120,9 +120,10 @@ def _given_up(record: Record) -> list[Block]:
     gain, dearest = max(costs, key=lambda cost: cost[0], default=(0.0, None))
     if dearest is not None and gain > WORTH_SAYING:
         step = with_unit(f"{dearest.step:g}", dearest.unit)
+        moved = moved_words(dearest, dearest.looser) or "no response noticeably"
         said.append(
-            f"Given up most to the {bound_words(dearest)}: loosened by {step} it would change"
-            f" {step_words(dearest, tighter=False)} (D: overall desirability)."
+            f"Given up most to the {bound_words(dearest)}: loosened by {step}, the best setting"
+            f" would change {moved}."
         )
     return [Paragraph(" ".join(said))] if said else []
 

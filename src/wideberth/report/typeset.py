@@ -22,7 +22,9 @@ _STANDARDS = ["a-2a", "ua-1"]
 _DOTS_PER_INCH = 200.0
 # PDF/A wants a date, and the clock's would change the bytes
 _UNDATED = (2000, 1, 1)
-_WIDE = 46
+# widths in letters; a line of a table takes about 130
+_SHORT, _WIDE = 18, 46
+_ROOM_FOR_SHORT = 60
 
 
 def memo_pdf(memo: Memo) -> bytes:
@@ -86,13 +88,14 @@ def _plain(block: Block) -> dict[str, Any]:
 
 
 def _widths(table: Table) -> list[int]:
-    """Let short columns be as wide as their words; long texts share the rest of the line."""
+    """Let short columns be as wide as their words (0); long texts share the rest of the line."""
     lengths = [
         max(len(cell) for cell in column) for column in zip(table.header, *table.rows, strict=True)
     ]
     if sum(lengths) < 100:
         return [0] * len(lengths)
-    return [max(12, min(length, _WIDE)) for length in lengths]
+    short = sum(length for length in lengths if length <= _SHORT) <= _ROOM_FOR_SHORT
+    return [0 if short and length <= _SHORT else max(12, min(length, _WIDE)) for length in lengths]
 
 
 def _breakable(text: str) -> str:
