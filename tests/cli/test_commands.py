@@ -1,8 +1,10 @@
 """The shell door: exit codes, JSON, refusals in words, the whole journey, the same bytes."""
 
 import json
+import shutil
 from pathlib import Path
 
+import jsonschema
 import pytest
 from click.testing import CliRunner
 
@@ -10,6 +12,9 @@ from support.folders import STATEMENT, write_study
 from wideberth.cli import main
 
 DEMO = str(Path(__file__).parents[2] / "studies" / "process" / "hydrogenation")
+SCHEMA = json.loads(
+    (Path(__file__).parents[2] / "docs" / "record.schema.json").read_text(encoding="utf-8")
+)
 
 
 def _run(*arguments):
@@ -129,15 +134,48 @@ def test_an_answer_that_is_not_met_exits_3(tmp_path):
     assert "holds nowhere in the region" in result.stdout
 
 
-def test_memo_writes_both_files_the_same_every_time(tmp_path):
-    first = _run("memo", DEMO, "--out", tmp_path / "a", "--quiet")
-    assert first.exit_code == 0
-    _run("memo", DEMO, "--out", tmp_path / "b", "--quiet")
-    for name in ("memo.html", "record.json"):
-        one, other = (tmp_path / folder / name for folder in "ab")
-        assert one.read_bytes() == other.read_bytes()
-    record = json.loads((tmp_path / "a" / "record.json").read_text())
+def test_the_memo_in_all_formats_and_its_record_computed_again(tmp_path):
+    study, out = shutil.copytree(DEMO, tmp_path / "study"), tmp_path / "out"
+    made = _run("memo", study, "--out", out, "--format", "docx,pdf, HTML", "--quiet")
+    assert made.exit_code == 0
+    names = ("memo.html", "memo.pdf", "memo.docx", "record.json")
+    assert sorted(path.name for path in out.iterdir()) == sorted(names)
+    assert (study / "history.jsonl").read_text(encoding="utf-8").count("\n") == 1
+    record = json.loads((out / "record.json").read_text(encoding="utf-8"))
+    assert record["tried"] == 1
     assert record["recommend"]["status"] == "met"
+    jsonschema.validate(record, SCHEMA)
+    again = _run("replay", out / "record.json", "--study", study, "--quiet")
+    assert again.exit_code == 0
+    assert "The same bits" in again.stdout
+    assert "Input runs.csv: as recorded" in again.stdout
+
+
+def test_an_unknown_format_is_said_before_anything_is_computed(tmp_path):
+    result = _run("memo", DEMO, "--out", tmp_path, "--format", "html,odt")
+    assert result.exit_code == 2
+    assert "choose from html, pdf, docx" in result.stderr
+    assert list(tmp_path.iterdir()) == []
+
+
+def test_a_history_changed_by_hand_is_said_before_anything_is_computed(tmp_path):
+    folder = write_study(tmp_path / "study")
+    (folder / "history.jsonl").write_text("{}\n", encoding="utf-8")
+    result = _run("memo", folder, "--quiet")
+    assert result.exit_code == 2
+    assert "history.jsonl line 1" in result.stderr
+    assert not (folder / "memo.html").exists()
+
+
+@pytest.mark.parametrize("text", [None, "", "[]", "{}", '{"study": 1}', "\xff"])
+def test_what_is_no_record_is_not_replayed(tmp_path, text):
+    path = tmp_path / "record.json"
+    if text is not None:
+        path.write_text(text, encoding="latin-1")
+    result = _run("replay", path)
+    assert result.exit_code == 2
+    assert "record.json" in result.stderr
+    assert "Traceback" not in result.stderr
 
 
 def test_an_unwritable_folder_is_said(tmp_path):

@@ -44,6 +44,7 @@ COMMANDS = (
     "robustness",
     "next",
     "memo",
+    "replay",
 )
 HEAVY = (
     "numpy",

@@ -1,18 +1,21 @@
 """The memo: one file, nothing from outside, nothing interpreted, every status readable."""
 
+import json
 import re
 from dataclasses import replace
 
+import jsonschema
 import numpy as np
 import pytest
 from scipy import stats
 
 from support.build import central_composite, less, make_study, more, small_composite
-from wideberth.chain.as_json import dumps_record, record_json
+from wideberth.chain.as_json import dumps_record
 from wideberth.chain.files import write_all
 from wideberth.chain.record import build_record
+from wideberth.chain.schema import record_schema
 from wideberth.errors import InputError
-from wideberth.report.memo import memo_html
+from wideberth.report.memo import full_record, memo_html
 from wideberth.report.numbers import format_range, format_value
 from wideberth.study.records import Limit
 
@@ -62,7 +65,7 @@ def test_every_kind_of_answer_makes_a_whole_memo(status, study):
         assert words in text
     assert ("Not supported" in text) == (status != "met")
     assert "nan" not in re.sub(r"<svg.*?</svg>", "", text, flags=re.DOTALL).split()
-    dumps_record(record_json(record))
+    jsonschema.validate(json.loads(dumps_record(full_record(record))), record_schema())
 
 
 def test_nothing_comes_from_outside_and_nothing_is_interpreted():

@@ -61,6 +61,20 @@ def test_a_sound_study(tmp_path):
         ),
         ("allowed = [7, 13]", "allowed = [7]", "'allowed' is [7]", "line", "at least 2 items"),
         (
+            "[today]",
+            '[memo]\nstage = "signed"\n[today]',
+            "'stage' is 'signed'",
+            "line",
+            "'draft' or 'final'",
+        ),
+        (
+            "[today]",
+            '[memo]\nstage = "final"\n[today]',
+            "[context] states no revision",
+            "memo.stage",
+            "leave the memo a draft",
+        ),
+        (
             "settable_step = 0.5",
             "settable_step = 40",
             "no whole multiple",

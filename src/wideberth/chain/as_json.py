@@ -27,7 +27,7 @@ from wideberth.surface.records import Shape
 from wideberth.uncertainty.records import Uncertainty
 
 Json = dict[str, Any]
-_NOT_TOLD = ("formula", "joined")
+NOT_TOLD = ("formula", "joined")
 
 
 def dumps(content: Json) -> str:
@@ -135,8 +135,9 @@ def record_json(record: Record) -> Json:
         "version": record.version,
         "packages": dict(record.packages),
         "seed": record.seed,
+        "draws": record.n_draws,
         "sha256": dict(study.sha256),
-        "study": _study(study),
+        "study": study_json(study),
         "doubts": [asdict(finding) for finding in record.doubts],
         "fit": {
             model.response: {**_model(model), **_covariance(model)}
@@ -219,11 +220,12 @@ def _covariance(model: Model) -> Json:
     return {"unscaled_covariance": _plain(model.covariance)}
 
 
-def _study(study: Study) -> Json:
+def study_json(study: Study) -> Json:
+    """Give the study as it was read, enough to compute everything again."""
     content = {
         field.name: _plain(getattr(study, field.name))
         for field in fields(study)
-        if field.name not in ("directory", "sha256", "notes")
+        if field.name not in ("directory", "sha256")
     }
     for stated, response in zip(content["responses"], study.responses, strict=True):
         if response.formula is not None:
@@ -240,7 +242,7 @@ def _plain(value: Any) -> Any:
         return {
             field.name: _plain(getattr(value, field.name))
             for field in fields(value)
-            if field.name not in _NOT_TOLD
+            if field.name not in NOT_TOLD
         }
     if isinstance(value, Mapping):
         return {str(key): _plain(item) for key, item in value.items()}

@@ -10,6 +10,22 @@ from pathlib import Path
 from wideberth.errors import Fault, InputError
 
 
+def check_writable(folder: Path) -> None:
+    """Find out before a long job whether its files can be written at its end.
+
+    Raises
+    ------
+    InputError
+        When the folder cannot be made or written.
+    """
+    try:
+        folder.mkdir(parents=True, exist_ok=True)
+        with tempfile.TemporaryFile(dir=folder):
+            pass
+    except OSError as error:
+        raise _unwritable(folder, error) from error
+
+
 def write_all(files: Mapping[Path, bytes]) -> None:
     """Write all files, each replaced in one step after every one of them is safely on disk.
 
@@ -32,11 +48,14 @@ def write_all(files: Mapping[Path, bytes]) -> None:
         for path, ready in waiting.items():
             ready.replace(path)
     except OSError as error:
-        where = str(next(iter(files)).parent)
-        reason = (error.strerror or "cannot be written").lower()
-        raise InputError(
-            [Fault(f"the folder cannot be written: {reason}", where, "choose another folder")]
-        ) from error
+        raise _unwritable(next(iter(files)).parent, error) from error
     finally:
         for ready in waiting.values():
             ready.unlink(missing_ok=True)
+
+
+def _unwritable(folder: Path, error: OSError) -> InputError:
+    reason = (error.strerror or "cannot be written").lower()
+    return InputError(
+        [Fault(f"the folder cannot be written: {reason}", str(folder), "choose another folder")]
+    )

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import platform
 from collections.abc import Mapping
 from dataclasses import dataclass
 from importlib.metadata import version as package_version
@@ -29,7 +30,7 @@ from wideberth.surface.ridge import shape
 from wideberth.uncertainty.assess import N_DRAWS, assess, draws_for
 from wideberth.uncertainty.records import Uncertainty
 
-_PACKAGES = ("numpy", "scipy")
+_PACKAGES = ("numpy", "scipy", "statsmodels", "cvxpy", "clarabel")
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -41,8 +42,9 @@ class Record:
     version : str
         Of wideberth.
     packages : mapping
-        Versions of the packages that the numbers rest on.
+        Versions of the packages that the numbers rest on, of Python, and the processor's kind.
     seed : int
+    n_draws : int
     doubts : tuple of Finding
         What `check_study` found.
     maps : tuple of FactorMap
@@ -64,6 +66,7 @@ class Record:
     version: str
     packages: Mapping[str, str]
     seed: int
+    n_draws: int
     study: Study
     doubts: tuple[Finding, ...]
     models: Models
@@ -126,8 +129,13 @@ def build_record(
     maps = factor_maps(problem, choice, draws)
     return Record(
         version=__version__,
-        packages={name: package_version(name) for name in _PACKAGES},
+        packages={
+            **{name: package_version(name) for name in _PACKAGES},
+            "python": platform.python_version(),
+            "processor": platform.machine(),
+        },
         seed=choice.seed,
+        n_draws=n_draws,
         study=study,
         doubts=doubts,
         models=models,

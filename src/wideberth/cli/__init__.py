@@ -20,6 +20,7 @@ _COMMANDS = (
     "robustness",
     "next",
     "memo",
+    "replay",
 )
 
 
@@ -45,7 +46,7 @@ def main() -> None:
     A study is a folder with study.toml (what you state) and a run sheet (what you measured).
 
     Exit codes: 0 done; 2 input or usage is wrong; 3 done, but no setpoint can be recommended;
-    1 a fault of wideberth itself.
+    4 a replay differs; 1 a fault of wideberth itself.
     """
     # one thread, so that sums come out in the same order every time
     for name in ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"):

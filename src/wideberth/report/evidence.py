@@ -7,11 +7,11 @@ from wideberth.decide.priorities import FARTHEST
 from wideberth.fit.records import Model
 from wideberth.report.assurance import assurance
 from wideberth.report.blocks import Block, Bullets, Drawing, Heading, PageBreak, Paragraph, Table
+from wideberth.report.closing import closing
 from wideberth.report.figures import draw_line, draw_map, draw_margins, draw_residuals
 from wideberth.report.frontier_figure import draw_frontier
 from wideberth.report.give_up_words import bound_words, step_words
 from wideberth.report.numbers import format_value, named, with_unit
-from wideberth.report.options import options
 from wideberth.report.rows import frontier_row
 from wideberth.report.style import to_svg
 from wideberth.report.wording import (
@@ -50,9 +50,9 @@ def evidence(record: Record) -> tuple[Block, ...]:
         *_maps(record),
         *assurance(record),
         *_goals(record),
-        *options(record),
         *_models(record),
         *_geometry(record),
+        *closing(record),
         Heading(3, "Methods and sources"),
         Bullets("", tuple(_METHODS.strip().splitlines())),
         *_provenance(record),
@@ -362,7 +362,9 @@ def _provenance(record: Record) -> list[Block]:
         Heading(3, "Provenance"),
         Paragraph(
             "The same study, seed and version give the same bytes; record.json beside this memo"
-            " carries every number at full precision."
+            " carries every number at full precision, the study as it was read, and these words."
+            " Its hash stands at the foot of every page. 'wideberth replay record.json' computes"
+            " everything again and names the first number that differs."
         ),
         Table("Inputs and versions", ("Item", "Hash or version"), tuple(rows)),
     ]

@@ -16,6 +16,7 @@ from matplotlib.patches import Rectangle
 from wideberth.decide.records import Choice, FactorMap, LimitMap, LimitVerdict
 from wideberth.fit.records import Model, Models
 from wideberth.operate.records import Window
+from wideberth.report.fonts import drawable
 from wideberth.report.style import (
     BLUE,
     FAINT,
@@ -38,6 +39,7 @@ _BATCHES = np.array([0.0, 10.0, 50.0, 80.0, 90.0, 95.0, 99.0, 100.0])
 
 def shortened(name: str, longest: int = 26) -> str:
     """Cut a long name so that it fits on an axis; its end often tells it from others."""
+    name = drawable(name)
     if len(name) <= longest:
         return name
     tail = longest // 2
@@ -45,9 +47,13 @@ def shortened(name: str, longest: int = 26) -> str:
 
 
 def axis_label(name: str, unit: str) -> str:
-    """Name a quantity with its unit; dollar signs are not mathematics here."""
-    text = f"{shortened(name)} [{unit}]" if unit else shortened(name)
-    return text.replace("$", r"\$")
+    """Name a quantity with its unit, as `plain_text`."""
+    return plain_text(f"{shortened(name)} [{shortened(unit, 16)}]" if unit else shortened(name))
+
+
+def plain_text(text: str) -> str:
+    """Make a text safe to draw: only characters at hand, and dollar signs are no mathematics."""
+    return drawable(text).replace("$", r"\$")
 
 
 def draw_margins(limits: tuple[LimitVerdict, ...], ax: Axes | None = None) -> Figure:
@@ -131,7 +137,7 @@ def draw_line(study: Study, choice: Choice, view: FactorMap, ax: Axes | None = N
             y = limit.margin[0]
             ax.plot(x, y, color=INK, linestyle=LINES[i % len(LINES)], linewidth=1.3)
             place = int(len(x) * 0.5)
-            ax.annotate(shortened(limit.response), (x[place], y[place]), fontsize=7)
+            ax.annotate(plain_text(shortened(limit.response)), (x[place], y[place]), fontsize=7)
         if not view.margins and view.desirability is not None:
             ax.plot(x, view.desirability[0], color=BLUE, linewidth=1.5)
         value = (choice.setpoint or {}).get(view.across)
@@ -235,8 +241,8 @@ def _mark_region(ax: Axes, study: Study, view: FactorMap, region: OptimumRegion 
 
 def _limit_name(limit: LimitVerdict | LimitMap, unit: str) -> str:
     word = "≥" if limit.side == "low" else "≤"
-    text = f"{shortened(limit.response)} {word} {limit.value:.6g} {unit}".rstrip()
-    return text.replace("$", r"\$")
+    text = f"{shortened(limit.response)} {word} {limit.value:.6g} {shortened(unit, 16)}"
+    return plain_text(text.rstrip())
 
 
 def _smallest(view: FactorMap) -> FloatArray | None:
@@ -349,8 +355,8 @@ def _residual_panel(ax: Axes, model: Model) -> None:
     if known:
         reach = max(_STANDS_OUT, float(np.abs(heights).max())) * 1.15
         ax.set_ylim(-reach, reach)
-    ax.set_title(shortened(model.response).replace("$", r"\$"), loc="left")
-    ax.set_xlabel(f"fitted [{model.unit}]" if model.unit else "fitted")
-    ax.set_ylabel("studentized residual" if known else f"residual [{model.unit}]")
+    ax.set_title(plain_text(shortened(model.response)), loc="left")
+    ax.set_xlabel(axis_label("fitted", model.unit))
+    ax.set_ylabel("studentized residual" if known else axis_label("residual", model.unit))
     ax.locator_params(axis="x", nbins=5)
     plain_axes(ax)

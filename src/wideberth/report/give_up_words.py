@@ -5,7 +5,7 @@ from __future__ import annotations
 from wideberth.decide.give_ups import Change, GiveUp
 from wideberth.report.numbers import format_value, with_unit
 
-_NOTHING = 5e-5
+WORTH_SAYING = 5e-5
 _COUNTS = 1e-3
 
 
@@ -23,13 +23,13 @@ def step_words(one: GiveUp, *, tighter: bool) -> str:
     change = one.tighter if tighter else one.looser
     if change.desirability is None:
         return "no setting holds the limits any more"
-    if abs(change.desirability) < _NOTHING:
+    if abs(change.desirability) < WORTH_SAYING:
         return "changes nothing"
-    moved = _moved(one, change)
+    moved = moved_words(one, change)
     return f"D {change.desirability:+.4f}{f', {moved}' if moved else ''}"
 
 
-def _moved(one: GiveUp, change: Change) -> str:
+def moved_words(one: GiveUp, change: Change) -> str:
     """List the responses that move by more than a thousandth of the step's effect on anything."""
     parts = []
     for name, by in change.responses.items():

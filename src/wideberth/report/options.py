@@ -3,13 +3,13 @@
 from __future__ import annotations
 
 from wideberth.chain.record import Record
-from wideberth.report.blocks import Block, Bullets, Heading, Paragraph, Table
+from wideberth.report.blocks import Block, Bullets, Paragraph, Table
 from wideberth.report.prospect_words import prospect_sentences
 from wideberth.report.rows import alternative_header, alternative_row
 
 
 def options(record: Record) -> list[Block]:
-    """Write the blocks on alternatives and prospects; empty where there are none."""
+    """Write what other aims and more evidence would give; empty where there is nothing."""
     blocks: list[Block] = []
     if record.alternatives:
         reasons = tuple(f"{a.aim}: {a.reason}." for a in record.alternatives if a.reason)
@@ -33,4 +33,4 @@ def options(record: Record) -> list[Block]:
     said = prospect_sentences(record.prospects, record.choice, record.study)
     if said:
         blocks.append(Bullets("What more evidence would buy", said))
-    return [Heading(3, "Alternatives considered"), *blocks] if blocks else []
+    return blocks

@@ -3,8 +3,9 @@
 from __future__ import annotations
 
 from wideberth.chain.record import Record
-from wideberth.decide.records import Choice, Status
+from wideberth.decide.records import Choice, Prediction, Status
 from wideberth.report.blocks import Block, Bullets, Heading, Paragraph, SignOff, Table
+from wideberth.report.give_up_words import WORTH_SAYING, bound_words, moved_words
 from wideberth.report.numbers import (
     decimals_of,
     format_range,
@@ -44,12 +45,12 @@ _BEYOND = (
 )
 
 
-def page_one(record: Record) -> tuple[Block, ...]:
-    """Write the blocks of page one."""
+def page_one(record: Record, digest: str = "") -> tuple[Block, ...]:
+    """Write the blocks of page one; ``digest`` is the hash of ``record.json``."""
     study, choice = record.study, record.choice
     blocks: list[Block] = [
         Heading(1, f"Setpoint memo: {study.title}"),
-        _identity(record),
+        _identity(record, digest),
         Heading(2, "Question and verdict"),
         Paragraph(_question(study)),
         Paragraph(f"{verdict(record)}. {status_sentence(choice)}", tone="lead"),
@@ -62,16 +63,15 @@ def page_one(record: Record) -> tuple[Block, ...]:
     if doubts:
         blocks.append(Bullets("What weakens this answer", doubts, tone="doubt"))
     blocks += [_settings(record), _responses(record)]
-    if choice.ruling:
-        blocks.append(Paragraph(f"The limit that rules: {choice.ruling}."))
     today = record.uncertainty.today
     if today is not None:
         changes = "; ".join(
             with_unit(f"{name} {difference_words(one)}", today.predictions[name].unit)
             for name, one in today.differences.items()
         )
-        verdict_words = " ".join(today_sentences(record.uncertainty)[:2])
+        verdict_words = " ".join(today_sentences(record.uncertainty)[: 2 if today.broken else 1])
         blocks.append(Paragraph(f"Against today: {changes}. {verdict_words}"))
+    blocks += _given_up(record)
     blocks += [
         Bullets("What is not known", (_location(record), *unknowns(study))),
         Paragraph(_confirmation(choice)),
@@ -107,10 +107,35 @@ def _spoiling(record: Record) -> tuple[Finding, ...]:
     return tuple(found)
 
 
-def _identity(record: Record) -> Table:
+def _given_up(record: Record) -> list[Block]:
+    """Say which limit rules, and which limit costs most."""
+    said = []
+    if record.choice.ruling:
+        said.append(f"The limit that rules: {record.choice.ruling}.")
+    costs = [
+        (one.looser.desirability, one)
+        for one in record.give_ups
+        if one.kind == "limit" and one.looser.desirability is not None
+    ]
+    gain, dearest = max(costs, key=lambda cost: cost[0], default=(0.0, None))
+    if dearest is not None and gain > WORTH_SAYING:
+        step = with_unit(f"{dearest.step:g}", dearest.unit)
+        moved = moved_words(dearest, dearest.looser) or "no response noticeably"
+        said.append(
+            f"Given up most to the {bound_words(dearest)}: loosened by {step}, the best setting"
+            f" would change {moved}."
+        )
+    return [Paragraph(" ".join(said))] if said else []
+
+
+def _identity(record: Record, digest: str) -> Table:
     study = record.study
     context = study.context
-    document = " ".join(part for part in (context.document, context.revision) if part)
+    document = (
+        context.document or "no document number",
+        f"revision {context.revision or 'not stated'}",
+        context.date or "no date stated",
+    )
     rows = [
         (
             "Product, equipment",
@@ -120,11 +145,8 @@ def _identity(record: Record) -> Table:
             "Scale run / intended",
             f"{context.scale_run or 'not stated'} / {context.scale_intended or 'not stated'}",
         ),
-        (
-            "Document, date",
-            ", ".join(part for part in (document, context.date) if part) or "not stated",
-        ),
-        ("Status, study hash", f"{record.choice.status}, {study.sha256.get('study', '')[:12]}"),
+        ("Document", ", ".join(document)),
+        ("Status, record", f"{study.stage}; {record.choice.status}; {digest[:16]}".rstrip("; ")),
     ]
     return Table("", ("", ""), tuple(rows))
 
@@ -157,8 +179,10 @@ def _location(record: Record) -> str:
 
 def _settings(record: Record) -> Table:
     study, choice, box = record.study, record.choice, record.window
+    today = record.uncertainty.today
     header = (
         "Factor",
+        *(("Today",) if today else ()),
         setting_word(choice).capitalize(),
         "Hold within",
         "Proven window",
@@ -170,9 +194,10 @@ def _settings(record: Record) -> Table:
     numeric = {factor.name: factor for factor in study.numeric}
     for name, value in (choice.setpoint or {}).items():
         around = choice.factors.get(name)
+        before = (format_setting(study, name, today.setting[name]),) if today else ()
         if around is None:
             levels = next(f.levels for f in study.categorical if f.name == name)
-            rows.append((name, str(value), "", "", ", ".join(levels), ""))
+            rows.append((name, *before, str(value), "", "", ", ".join(levels), ""))
             continue
         digits = decimals_of(numeric[name])
         ends = [around.room, around.allowed, around.explored]
@@ -184,48 +209,67 @@ def _settings(record: Record) -> Table:
         if box.status == "proven":
             proven = ends_words(numeric[name], box.settable[name], inwards=True)
         shown = format_setting(study, name, value)
-        rows.append((named(name, units[name]), shown, texts[0], proven, *texts[1:]))
+        rows.append((named(name, units[name]), *before, shown, texts[0], proven, *texts[1:]))
     return Table("Settings", header, tuple(rows))
 
 
 def _responses(record: Record) -> Table:
-    choice = record.choice
+    choice, today = record.choice, record.uncertainty.today
+    optimism = record.uncertainty.optimism
+    corrected = optimism.responses if optimism else {}
     header = (
         "Response",
-        "Expected, 95 % interval",
+        *(("Today",) if today else ()),
+        "Expected, corrected; fitted mean (95 %)" if corrected else "Fitted mean (95 %)",
         "One run; mean of 3 *",
         "Limit and its guard",
         "Margin over the room",
     )
-    rows = []
+    rows: list[tuple[str, ...]] = []
     for name, prediction in choice.predictions.items():
-        interval = prediction.mean_interval
-        half = (interval[1] - interval[0]) / 2 if interval else None
-        expected = format_value(prediction.mean, half or None)
-        if interval and half:
-            expected += f" ({format_range(*interval, half)})"
-        elif interval is None:
-            expected += " (no interval: no degrees of freedom)"
-        else:
-            expected += " (exact)"
+        half = _half(prediction)
+        before = (format_value(today.predictions[name].mean, half),) if today else ()
+        expected = _expected(prediction, corrected.get(name))
         single = _runs_should_fall(choice, name)
         own = [verdict for verdict in choice.limits if verdict.response == name]
         limits = "; ".join(
             f"{limit_words(v)}: {guard_sentence(v.guard, v.confidence, v.share)}" for v in own
         )
         margins = "; ".join(margin_words(v) for v in own)
-        rows.append((named(name, prediction.unit), expected, single, limits, margins))
+        rows.append((named(name, prediction.unit), *before, expected, single, limits, margins))
+    blank = ("",) if today else ()
     for constraint in choice.constraints:
         word = "at most" if constraint.side == "at_most" else "at least"
         mark = "met" if constraint.met else "not met"
         value = with_unit(f"{constraint.value:.4g}", "at its worst in the room")
-        rows.append((constraint.name, value, "", f"{word} {constraint.bound:g}", mark))
+        rows.append((constraint.name, *blank, value, "", f"{word} {constraint.bound:g}", mark))
     together = record.uncertainty.conformance
     if together is not None:
         wandering = record.uncertainty.setting_error_included
         how = "settings wandering within their tolerances" if wandering else "settings held exactly"
-        rows.append(("All limits together", conformance_words(together), "", how, ""))
+        words = conformance_words(together)
+        rows.append(("All limits together", *blank, words, "", how, ""))
     return Table("What to expect there", header, tuple(rows))
+
+
+def _half(prediction: Prediction) -> float | None:
+    """Give half the width of the interval of the mean; ``None`` where there is no width."""
+    if prediction.mean_interval is None:
+        return None
+    low, high = prediction.mean_interval
+    return (high - low) / 2 or None
+
+
+def _expected(prediction: Prediction, corrected: tuple[float, float] | None) -> str:
+    """Write what to expect: without what the search flatters, then the fitted mean."""
+    interval, half = prediction.mean_interval, _half(prediction)
+    mean = format_value(prediction.mean, half)
+    if interval is None:
+        return f"{mean} (no interval: no degrees of freedom)"
+    if half is None:
+        return f"{mean} (exact)"
+    fitted = f"{mean} ({format_range(*interval, half)})"
+    return fitted if corrected is None else f"{format_value(corrected[1], half)}; {fitted}"
 
 
 def _runs_should_fall(choice: Choice, name: str) -> str:

@@ -8,7 +8,7 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 from wideberth.operate.records import Robustness
-from wideberth.report.figures import axes_or_new, axis_label, shortened
+from wideberth.report.figures import axes_or_new, axis_label, plain_text, shortened
 from wideberth.report.style import FAINT, INK, SHADE, WIDTH, house_style, plain_axes
 
 _HATCHES = ("", "////", "....", "\\\\\\\\", "xxxx", "----", "oo", "++")
@@ -41,7 +41,7 @@ def draw_shares(answer: Robustness, ax: Axes | None = None) -> Figure:
                     edgecolor=INK,
                     linewidth=0.5,
                     hatch=_HATCHES[i % len(_HATCHES)],
-                    label=shortened(name).replace("$", r"\$") if name not in drawn else None,
+                    label=plain_text(shortened(name)) if name not in drawn else None,
                 )
                 drawn.add(name)
                 start += part

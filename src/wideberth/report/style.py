@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import io
+import logging
 from collections.abc import Iterator
 from contextlib import contextmanager
 from typing import Any
@@ -10,6 +11,8 @@ from typing import Any
 import matplotlib as mpl
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
+
+from wideberth.report.fonts import families
 
 INK = "#22272e"
 FAINT = "#8a929b"
@@ -22,7 +25,7 @@ WIDTH = 6.7
 
 # the library types every key of its settings apart; ours are plain texts and numbers
 _SETTINGS: Any = {
-    "font.family": "DejaVu Sans",
+    "font.family": list(families()),
     "font.size": 8.0,
     "axes.titlesize": 8.5,
     "axes.labelsize": 8.0,
@@ -44,14 +47,21 @@ _SETTINGS: Any = {
 @contextmanager
 def house_style() -> Iterator[None]:
     """Draw in the house style, whatever the person's own settings are."""
-    with mpl.rc_context(), mpl.rc_context(_SETTINGS):
-        yield
+    # a fallback font may come in one weight only, of which every figure would complain
+    complaints = logging.getLogger("matplotlib.font_manager")
+    before = complaints.level
+    complaints.setLevel(logging.ERROR)
+    try:
+        with mpl.rc_context(), mpl.rc_context(_SETTINGS):
+            yield
+    finally:
+        complaints.setLevel(before)
 
 
 def to_svg(figure: Figure, name: str) -> str:
     """Write a figure as SVG; the same figure always gives the same bytes."""
     target = io.StringIO()
-    with mpl.rc_context({**_SETTINGS, "svg.hashsalt": name}):
+    with house_style(), mpl.rc_context({"svg.hashsalt": name}):
         figure.savefig(target, format="svg", metadata={"Date": None, "Creator": None})
     text = target.getvalue()
     return text[text.index("<svg") :]

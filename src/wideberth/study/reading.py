@@ -97,6 +97,7 @@ def _read(folder: Path, overrides: Mapping[str, object], *, draft: bool) -> Stud
         plan=plan_choice(tables.plan),
         runs=sheet.runs,
         sha256=hashes,
+        stage=tables.memo.stage,
         notes=sheet.notes,
     )
 

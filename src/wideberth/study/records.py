@@ -266,6 +266,8 @@ class Study:
     plan: PlanChoice = PlanChoice()
     notes: tuple[Finding, ...] = ()
     """What reading found worth saying (a default taken, an empty cell)."""
+    stage: Literal["draft", "final"] = "draft"
+    """What the memo is, as its owner says."""
 
     @property
     def numeric(self) -> tuple[NumericFactor, ...]:

@@ -146,6 +146,12 @@ class BlocksTable(_Table):
     future: Literal["recur", "sample"]
 
 
+class MemoTable(_Table):
+    """``[memo]``."""
+
+    stage: Literal["draft", "final"] = "draft"
+
+
 class StudyFile(_Table):
     """The whole file."""
 
@@ -158,7 +164,7 @@ class StudyFile(_Table):
     blocks: BlocksTable | None = None
     today: dict[str, Number | str] = Field(default_factory=dict)
     plan: PlanTable = PlanTable()
-    memo: dict[str, Any] = Field(default_factory=dict)
+    memo: MemoTable = MemoTable()
 
 
 _TABLES: dict[str, type[BaseModel]] = {
@@ -174,6 +180,7 @@ _TABLES: dict[str, type[BaseModel]] = {
     "region.keep": RadiusTable,
     "blocks": BlocksTable,
     "plan": PlanTable,
+    "memo": MemoTable,
     "": StudyFile,
 }
 

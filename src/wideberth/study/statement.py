@@ -57,6 +57,19 @@ class Statement:
         yield from self._constraint_faults()
         yield from self._today_faults()
         yield from plan_faults(self.tables, self.at)
+        yield from self._stage_faults()
+
+    def _stage_faults(self) -> Iterator[Fault]:
+        """Ask of a final memo what it takes to find it again: number, revision and date."""
+        if self.tables.memo.stage == "draft":
+            return
+        for key in ("document", "revision", "date"):
+            if not getattr(self.tables.context, key).strip():
+                yield Fault(
+                    f"the memo is called final, but [context] states no {key}",
+                    self.at("memo", "stage"),
+                    f"state {key} in [context], or leave the memo a draft",
+                )
 
     def _factor_faults(self, name: str, table: FactorTable) -> Iterator[Fault]:
         where = self.at("factors", name)
