@@ -12,6 +12,7 @@ import numpy as np
 
 from wideberth import __version__
 from wideberth.chain.record import Record
+from wideberth.decide.every_run import EveryRun
 from wideberth.decide.frontier import Frontier
 from wideberth.decide.give_ups import GiveUp
 from wideberth.decide.records import Choice
@@ -76,11 +77,12 @@ def shape_json(shapes: tuple[Shape, ...], study: Study) -> Json:
     return {**_head("shape", study), "responses": responses}
 
 
-def recommend_json(choice: Choice, study: Study) -> Json:
-    """Give the answer of ``recommend``."""
+def recommend_json(choice: Choice, study: Study, whole: EveryRun | None = None) -> Json:
+    """Give the answer of ``recommend``, beside it the answer with nothing left out."""
     content = _plain(choice)
     head = {**_head("recommend", study), "seed": choice.seed}
-    return {**head, **{key: value for key, value in content.items() if key != "seed"}}
+    answer = {**head, **{key: value for key, value in content.items() if key != "seed"}}
+    return answer if whole is None else {**answer, "with_every_run": _plain(whole)}
 
 
 def give_ups_json(costs: tuple[GiveUp, ...]) -> list[Any]:
@@ -127,7 +129,7 @@ def record_json(record: Record) -> Json:
             for model in record.models.models
         },
         "shape": shape_json(record.shapes, study)["responses"],
-        "recommend": recommend_json(record.choice, study),
+        "recommend": recommend_json(record.choice, study, record.every_run),
         "uncertainty": uncertainty_json(record.uncertainty, study),
         "window": window_json(record.window, study),
         "robustness": robustness_json(record.robustness, study),
@@ -154,6 +156,7 @@ def _model(model: Model) -> Json:
         "order": model.order,
         "n": model.n_runs,
         "df_residual": model.df_residual,
+        "df_error": model.df_error,
         "coefficients": [_plain(term) for term in model.table],
         "s": model.s,
         "r2": model.r2,
@@ -169,6 +172,10 @@ def _model(model: Model) -> Json:
     }
     if model.lack_of_fit is not None:
         content["lack_of_fit"] = _plain(model.lack_of_fit)
+    if model.left_out:
+        content["left_out"] = [_plain(run) for run in model.left_out]
+    if model.pooled is not None:
+        content["pooled"] = _plain(model.pooled)
     return content
 
 
@@ -180,7 +187,7 @@ def _study(study: Study) -> Json:
     content = {
         field.name: _plain(getattr(study, field.name))
         for field in fields(study)
-        if field.name not in ("directory", "sha256", "notes")
+        if field.name not in ("directory", "sha256", "notes", "every_run")
     }
     for stated, response in zip(content["responses"], study.responses, strict=True):
         if response.formula is not None:

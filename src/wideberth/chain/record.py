@@ -7,6 +7,7 @@ from dataclasses import dataclass
 from importlib.metadata import version as package_version
 
 from wideberth import __version__
+from wideberth.decide.every_run import EveryRun, with_every_run
 from wideberth.decide.frontier import Frontier, trade_off
 from wideberth.decide.give_ups import GiveUp, give_ups
 from wideberth.decide.maps import factor_maps
@@ -51,6 +52,8 @@ class Record:
         The trade-off between several goals, where the answer is ``met``.
     priorities : Priorities or None
         How far each priority may move before the setpoint leaves its tolerance.
+    every_run : EveryRun or None
+        The answer with nothing left out, where runs are left out.
     outward : Outward
         The ridge of the compromise, and runs to try beyond the explored edge.
     """
@@ -71,6 +74,7 @@ class Record:
     give_ups: tuple[GiveUp, ...]
     frontier: Frontier | None
     priorities: Priorities | None
+    every_run: EveryRun | None = None
 
 
 def build_record(
@@ -95,6 +99,7 @@ def build_record(
     shapes = shape(models) if study.numeric else ()
     progress("recommend", 0.2)
     problem, choice = solve(models, seed=seed)
+    whole = with_every_run(models, choice)
     draws = draws_for(problem, choice, n_draws)
     progress("give-ups", 0.25)
     costs = give_ups(problem, choice)
@@ -130,4 +135,5 @@ def build_record(
         give_ups=costs,
         frontier=traded,
         priorities=swayed,
+        every_run=whole,
     )

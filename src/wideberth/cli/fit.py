@@ -31,10 +31,13 @@ def command(study_dir: str, *, as_json: bool) -> int:
     from wideberth.fit.models import fit
     from wideberth.study.reading import read_study
 
-    models = fit(read_study(study_dir))
+    study = read_study(study_dir)
+    models = fit(study)
     if as_json:
         click.echo(dumps(fit_json(models)), nl=False)
         return 0
+    for one in study.left_out:
+        click.echo(one.words())
     for model in models.models:
         _print_model(model)
     return 0
@@ -63,7 +66,8 @@ def _print_model(model: Model) -> None:
     )
     parts = [f"{model.n_runs} runs", f"{model.df_residual} residual degrees of freedom"]
     if model.s is not None:
-        parts.append(f"s {with_unit(format_value(model.s, model.s), model.unit)}")
+        pooled = "" if model.pooled is None else f" on {model.df_error} with the history"
+        parts.append(f"s {with_unit(format_value(model.s, model.s), model.unit)}{pooled}")
     for label, value in (
         ("R2", model.r2),
         ("adjusted R2", model.r2_adjusted),

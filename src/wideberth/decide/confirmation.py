@@ -51,10 +51,10 @@ def confirmation_ranges(
 
     Two-sided prediction intervals, all responses together with 95 % after Bonferroni.
     """
-    noisy = [m for m in problem.models.models if not m.exact and m.s and m.df_residual]
+    noisy = [m for m in problem.models.models if not m.exact and m.s and m.df_error]
     result = {}
     for model in noisy:
-        t = float(stdtrit(model.df_residual, 1.0 - 0.05 / (2 * len(noisy))))
+        t = float(stdtrit(model.df_error, 1.0 - 0.05 / (2 * len(noisy))))
         ends = {}
         for n_runs in (1, 3):
             lows, highs = [], []

@@ -201,9 +201,9 @@ def factor_surroundings(problem: Problem, x: FloatArray | None) -> Mapping[str, 
 def _interval(model: Model, mean: float, variance: float) -> tuple[float, float] | None:
     if model.exact or model.noise_free:
         return mean, mean
-    if model.s is None or model.df_residual == 0:
+    if model.s is None or model.df_error == 0:
         return None
-    half = float(stdtrit(model.df_residual, _TWO_SIDED)) * model.s * float(np.sqrt(variance))
+    half = float(stdtrit(model.df_error, _TWO_SIDED)) * model.s * float(np.sqrt(variance))
     return mean - half, mean + half
 
 

@@ -242,7 +242,7 @@ def _guarding(models: Models, response: Response, bare: tuple[Arena, ...], seed:
         raise ValueError(message)
     guard = Guard(
         limit.guard,
-        model.df_residual,
+        model.df_error,
         _split_confidence(study, limit.confidence, limit.guard),
         limit.share,
     )
@@ -254,7 +254,7 @@ def _guarding(models: Models, response: Response, bare: tuple[Arena, ...], seed:
         scale = (best - worst) / 100 or max(abs(limit.low or 0.0), abs(limit.high or 0.0)) or 1.0
     needs_df = limit.guard != "none" and not model.exact and not model.noise_free
     if not needs_df or s == 0:
-        possible = not (needs_df and model.df_residual == 0)
+        possible = not (needs_df and model.df_error == 0)
         return Guarding(guard, None, 1.0, scale, s > 0, possible)
     maps = tuple(
         design_map(model, study, levels=where.levels, block=block)

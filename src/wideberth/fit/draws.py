@@ -102,7 +102,7 @@ def draw_coefficients(models: Models, n_draws: int, seed: int) -> Draws:
         return Draws(names, (), np.zeros((n_draws, 0, 0)))
     residuals, projections, rows = _residuals_and_projections(models, varying)
     root = _root_of_correlation(residuals)
-    least = min(model.df_residual for model in varying)
+    least = min(model.df_error for model in varying)
     coefficients: list[list[FloatArray]] = [[] for _ in varying]
     noise = []
     for block in range(-(-n_draws // BLOCK)):
@@ -124,7 +124,10 @@ def draw_coefficients(models: Models, n_draws: int, seed: int) -> Draws:
 def _residuals_and_projections(
     models: Models, varying: tuple[Model, ...]
 ) -> tuple[FloatArray, list[FloatArray], list[IntArray]]:
-    """Give residuals (n, m), not-a-number where a run is missing, and each (X'X)^-1 X'."""
+    """Give residuals (n, m), not-a-number where a run is missing, and each (X'WX)^-1 X'W^1/2.
+
+    Residuals carry the root of their weight, so that all have the variance of one batch.
+    """
     study = models.study
     responses = {response.name: response for response in study.responses}
     used = [rows_fitted(study, responses[model.response]) for model in varying]
@@ -134,8 +137,9 @@ def _residuals_and_projections(
     for j, (model, rows) in enumerate(zip(varying, used, strict=True)):
         matrix = model_matrix(study, model.terms, rows)
         places.append(np.searchsorted(every, rows).astype(np.int64))
-        residuals[places[j], j] = [run.residual for run in model.runs]
-        projections.append(model.covariance @ matrix.T)
+        root = np.sqrt([run.weight for run in model.runs])
+        residuals[places[j], j] = root * [run.residual for run in model.runs]
+        projections.append(model.covariance @ (matrix * root[:, None]).T)
     return residuals, projections, places
 
 
@@ -177,9 +181,9 @@ def _scaled(mixed: FloatArray, varying: tuple[Model, ...], least: int) -> FloatA
     for j, model in enumerate(varying):
         size = np.sqrt((mixed[:, j] ** 2).sum(axis=1))
         chi_square = 1.0 / size**2
-        if model.df_residual != least:
+        if model.df_error != least:
             level = gammainc(least / 2, chi_square / 2)
-            chi_square = 2 * gammaincinv(model.df_residual / 2, level)
-        sd = (model.s or 0.0) * np.sqrt(model.df_residual / chi_square)
+            chi_square = 2 * gammaincinv(model.df_error / 2, level)
+        sd = (model.s or 0.0) * np.sqrt(model.df_error / chi_square)
         scaled[:, j] *= (sd / size)[:, None]
     return scaled

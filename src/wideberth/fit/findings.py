@@ -11,6 +11,7 @@ import numpy as np
 from scipy.special import stdtrit
 
 from wideberth.fit.records import Model
+from wideberth.fit.wording import with_unit
 from wideberth.study.records import Finding, FloatArray, Grade, Limit, Response
 
 _SIGNIFICANT = 0.05
@@ -35,7 +36,7 @@ def findings_of(model: Model, response: Response, y: FloatArray) -> tuple[Findin
         text = f"{name}: the model describes the runs exactly; there is no noise to judge it by."
         return (Finding("look", text, name),)
     found = [*_fit_itself(model), *_lack(model, response.limit, y), *_runs(model)]
-    if not found:
+    if not found and model.df_residual > 0:
         found.append(_summary(model))
     return tuple(found)
 
@@ -50,7 +51,7 @@ def _summary(model: Model) -> Finding:
 
 def _fit_itself(model: Model) -> list[Finding]:
     name = model.response
-    if model.df_residual == 0:
+    if model.df_error == 0:
         text = (
             f"{name}: as many terms as runs; the noise cannot be estimated, and no guard but"
             " 'none' can be computed."
@@ -69,9 +70,9 @@ def _fit_itself(model: Model) -> list[Finding]:
             f" adjusted R2 {model.r2_adjusted:.2f})."
         )
         found.append(Finding("look", text, name))
-    if model.df_residual < _FEW_DF:
+    if model.df_error < _FEW_DF:
         text = (
-            f"{name}: only {model.df_residual} residual degrees of freedom; s and every guard are"
+            f"{name}: only {model.df_error} residual degrees of freedom; s and every guard are"
             " poorly known."
         )
         found.append(Finding("look", text, name))
@@ -120,9 +121,3 @@ def _runs(model: Model) -> list[Finding]:
         text = f"{name}: nothing checks the run in row {', '.join(alone)} (leverage 1)."
         found.append(Finding("look", text, name))
     return found
-
-
-def with_unit(value: float, unit: str) -> str:
-    """Write a number to three or four digits with its unit."""
-    written = f"{value:.0f}" if abs(value) >= 1000 else f"{value:.3g}"
-    return f"{written} {unit}".rstrip()

@@ -41,10 +41,11 @@ def lack_of_fit(fit: LeastSquares, y: FloatArray, groups: IntArray) -> tuple[Lac
         return None, "no run was repeated at the same settings"
     if df_lack <= 0:
         return None, "there are no more different settings than terms"
-    means = np.bincount(groups, weights=y) / np.bincount(groups)
-    ss_pure = float(((y - means[groups]) ** 2).sum())
+    w = fit.weight
+    means = np.bincount(groups, weights=w * y) / np.bincount(groups, weights=w)
+    ss_pure = float(w @ (y - means[groups]) ** 2)
     ss_lack = max(fit.rss - ss_pure, 0.0)
-    if ss_pure <= 1e-20 * float((y**2).sum()):
+    if ss_pure <= 1e-20 * float(w @ y**2):
         return None, "repeated runs agree exactly, so they show no noise to test against"
     ms_lack, ms_pure = ss_lack / df_lack, ss_pure / df_pure
     f = ms_lack / ms_pure

@@ -12,6 +12,7 @@ import numpy as np
 from scipy.special import stdtr
 
 from wideberth.errors import Fault, RefusedError
+from wideberth.fit.circumstances import circumstances, left_out_runs
 from wideberth.fit.columns import (
     degree,
     in_printed_order,
@@ -19,6 +20,7 @@ from wideberth.fit.columns import (
     model_terms,
     product_factors,
 )
+from wideberth.fit.exact import exact_model
 from wideberth.fit.findings import findings_of, worst_grade
 from wideberth.fit.lack_of_fit import lack_of_fit, replicate_groups
 from wideberth.fit.least_squares import (
@@ -31,8 +33,8 @@ from wideberth.fit.least_squares import (
     press,
     studentized,
 )
+from wideberth.fit.pooling import batch_error
 from wideberth.fit.records import FittedTerm, Model, Models, RunDiagnosis, Term
-from wideberth.quadratic.terms import n_terms, pairs, term_names
 from wideberth.study.records import Finding, FloatArray, IntArray, Response, Study
 
 
@@ -48,7 +50,7 @@ def fit(study: Study) -> Models:
     faults: list[Fault] = []
     for response in study.responses:
         if response.formula is not None:
-            models.append(_exact_model(study, response))
+            models.append(exact_model(study, response))
             continue
         fault = _unsupported_order(study, response)
         if fault is not None:
@@ -168,22 +170,21 @@ def _fitted_model(study: Study, response: Response) -> Model:
         terms, found = model_terms(study, response.order, study.runs.block[rows]), ()
     terms = tuple(terms[i] for i in in_printed_order(terms))
     y = study.runs.measured[rows, study.measured.index(response)]
-    fitted = least_squares(model_matrix(study, terms, rows), y)
-    noise_free = fitted.df > 0 and is_noise_free(fitted, y)
+    weight = None if study.runs.weight is None else study.runs.weight[rows]
+    fitted = least_squares(model_matrix(study, terms, rows), y, weight)
+    exact_fit = fitted.df > 0 and is_noise_free(fitted, y)
     reasons: dict[str, str] = {}
-    s = None
-    if fitted.df > 0:
-        s = 0.0 if noise_free else float(np.sqrt(fitted.rss / fitted.df))
-    else:
+    s, df, pooled = batch_error(fitted, response.known_sd, exact_fit=exact_fit)
+    if s is None:
         reasons["s"] = "there are as many terms as runs, so nothing is left to estimate the noise"
     lack, why = (
         (None, "the model describes the runs exactly")
-        if noise_free
+        if exact_fit
         else lack_of_fit(fitted, y, replicate_groups(study, rows))
     )
     if lack is None:
         reasons["lack_of_fit"] = why
-    total = float(((y - y.mean()) ** 2).sum())
+    total = float(fitted.weight @ (y - np.average(y, weights=fitted.weight)) ** 2)
     constant = float(np.ptp(y)) <= 1e-12 * float(np.abs(y).max(initial=0.0))
     r2, adjusted, press_value, r2_press = _quality(fitted, total, constant, reasons)
     model = Model(
@@ -194,26 +195,33 @@ def _fitted_model(study: Study, response: Response) -> Model:
         terms=terms,
         coefficients=fitted.coefficients,
         covariance=fitted.covariance,
-        table=_table(terms, fitted, s),
+        table=_table(terms, fitted, s, df),
         n_runs=len(rows),
         df_residual=fitted.df,
+        df_error=df,
         s=s,
         r2=r2,
         r2_adjusted=adjusted,
         press=press_value,
         r2_press=r2_press,
         lack_of_fit=lack,
-        runs=_runs(study, rows, y, fitted, noise_free),
-        noise_free=noise_free,
+        runs=_runs(study, rows, y, fitted, exact_fit=exact_fit),
+        noise_free=exact_fit and pooled is None,
         findings=found,
         grade="fine",
         reasons=reasons,
+        left_out=left_out_runs(study, response, terms, fitted, s, df),
+        pooled=pooled,
     )
-    return _graded(model, response, y)
+    return _graded(study, model, response, y)
 
 
-def _graded(model: Model, response: Response, y: FloatArray) -> Model:
-    findings = (*model.findings, *findings_of(model, response, y))
+def _graded(study: Study, model: Model, response: Response, y: FloatArray) -> Model:
+    findings = (
+        *model.findings,
+        *findings_of(model, response, y),
+        *circumstances(study, response, model),
+    )
     return replace(model, findings=findings, grade=worst_grade(findings))
 
 
@@ -239,7 +247,7 @@ def _quality(
 
 
 def _table(
-    terms: tuple[Term, ...], fitted: LeastSquares, s: float | None
+    terms: tuple[Term, ...], fitted: LeastSquares, s: float | None, df: int
 ) -> tuple[FittedTerm, ...]:
     rows = []
     for i, term in enumerate(terms):
@@ -249,15 +257,15 @@ def _table(
             continue
         se = s * float(np.sqrt(fitted.covariance[i, i]))
         t = value / se
-        rows.append(FittedTerm(term.name, value, se, t, float(2 * stdtr(fitted.df, -abs(t)))))
+        rows.append(FittedTerm(term.name, value, se, t, float(2 * stdtr(df, -abs(t)))))
     return tuple(rows)
 
 
 def _runs(
-    study: Study, rows: IntArray, y: FloatArray, fitted: LeastSquares, noise_free: bool
+    study: Study, rows: IntArray, y: FloatArray, fitted: LeastSquares, *, exact_fit: bool
 ) -> tuple[RunDiagnosis, ...]:
     outer, cook = studentized(fitted), cook_distance(fitted)
-    known = not noise_free
+    known = not exact_fit
     return tuple(
         RunDiagnosis(
             row=study.runs.rows[row],
@@ -267,62 +275,7 @@ def _runs(
             leverage=float(fitted.leverage[i]),
             studentized=float(outer[i]) if known and np.isfinite(outer[i]) else None,
             cook=float(cook[i]) if known and np.isfinite(cook[i]) else None,
+            weight=float(fitted.weight[i]),
         )
         for i, row in enumerate(rows)
-    )
-
-
-def _exact_model(study: Study, response: Response) -> Model:
-    """Turn a formula in own units into coded coefficients, exactly."""
-    names = tuple(factor.name for factor in study.numeric)
-    k = len(names)
-    middle = np.array([(f.low + f.high) / 2 for f in study.numeric])
-    half = np.array([(f.high - f.low) / 2 for f in study.numeric])
-    beta = np.zeros(n_terms(k))
-    first, second = pairs(k)
-    product_place = {
-        (a, b): 1 + 2 * k + i for i, (a, b) in enumerate(zip(first, second, strict=True))
-    }
-    formula = response.formula
-    for factors, number in (formula.terms if formula else {}).items():
-        places = sorted(names.index(name) for name in factors)
-        if not places:
-            beta[0] += number
-        elif len(places) == 1:
-            (j,) = places
-            beta[0] += number * middle[j]
-            beta[1 + j] += number * half[j]
-        else:
-            a, b = places
-            beta[0] += number * middle[a] * middle[b]
-            beta[1 + a] += number * half[a] * middle[b]
-            beta[1 + b] += number * half[b] * middle[a]
-            place = 1 + k + a if a == b else product_place[(a, b)]
-            beta[place] += number * half[a] * half[b]
-    terms = tuple(Term(name, place) for place, name in enumerate(term_names(names)))
-    reason = "known exactly by its formula"
-    return Model(
-        response=response.name,
-        unit=response.unit,
-        exact=True,
-        order=2,
-        terms=terms,
-        coefficients=beta,
-        covariance=np.zeros((len(beta), len(beta))),
-        table=tuple(
-            FittedTerm(t.name, float(b), None, None, None) for t, b in zip(terms, beta, strict=True)
-        ),
-        n_runs=0,
-        df_residual=0,
-        s=0.0,
-        r2=None,
-        r2_adjusted=None,
-        press=None,
-        r2_press=None,
-        lack_of_fit=None,
-        runs=(),
-        noise_free=False,
-        findings=(Finding("fine", f"{response.name} is {reason}.", response.name),),
-        grade="fine",
-        reasons=dict.fromkeys(("r2", "r2_adjusted", "press", "r2_press", "lack_of_fit"), reason),
     )

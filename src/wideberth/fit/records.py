@@ -82,6 +82,36 @@ class RunDiagnosis:
     leverage: float
     studentized: float | None
     cook: float | None
+    weight: float = 1.0
+
+
+@dataclass(frozen=True, slots=True)
+class LeftOutRun:
+    """A run that is not fitted, held against what the model without it expects of it.
+
+    ``interval`` is the two-sided 95 % prediction interval of that one value; ``None`` where no
+    degrees of freedom support one.
+    """
+
+    row: int
+    reason: str
+    observed: float
+    expected: float
+    interval: tuple[float, float] | None
+
+
+@dataclass(frozen=True, slots=True)
+class Pooled:
+    """What pooling a standard deviation known from history did.
+
+    ``value`` on ``df`` is what was known, ``s_runs`` on the residual degrees of freedom what the
+    runs alone show (``None`` without any), ``p`` the two-sided F test between the two.
+    """
+
+    value: float
+    df: int
+    s_runs: float | None
+    p: float | None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -98,14 +128,16 @@ class Model:
     coefficients : ndarray, shape (q,)
         Coded units.
     covariance : ndarray, shape (q, q)
-        Unscaled: (X'X)^-1; the coefficients' covariance is ``s**2`` times this. Zero if exact.
+        Unscaled: (X'WX)^-1; the coefficients' covariance is ``s**2`` times this. Zero if exact.
     n_runs : int
         Runs that were fitted (0 if exact).
     df_residual : int
-        0 if exact or saturated.
+        Of the runs alone; 0 if exact or saturated.
+    df_error : int
+        Degrees of freedom of ``s``: those of the runs, and of the history that is pooled.
     s : float or None
-        Residual standard deviation; 0.0 for an exact model and an exact fit, ``None`` when no
-        degrees of freedom are left.
+        Standard deviation of one batch of weight 1; 0.0 for an exact model and an exact fit,
+        ``None`` when no degrees of freedom are left.
     noise_free : bool
         Measured, with residuals at rounding level.
     reasons : mapping
@@ -124,6 +156,7 @@ class Model:
     table: tuple[FittedTerm, ...]
     n_runs: int
     df_residual: int
+    df_error: int
     s: float | None
     r2: float | None
     r2_adjusted: float | None
@@ -135,6 +168,8 @@ class Model:
     findings: tuple[Finding, ...]
     grade: Grade
     reasons: Mapping[str, str] = field(default_factory=dict)
+    left_out: tuple[LeftOutRun, ...] = ()
+    pooled: Pooled | None = None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -165,7 +200,7 @@ class Surface:
     s : float
         Standard deviation of one batch (0.0 where there is no noise).
     df : int
-        Residual degrees of freedom (0 where there are none).
+        Degrees of freedom of s (0 where there are none).
     """
 
     coefficients: FloatArray
@@ -218,7 +253,7 @@ def surface(
         coefficients=mapped @ model.coefficients,
         covariance=mapped @ model.covariance @ mapped.T,
         s=model.s or 0.0,
-        df=model.df_residual,
+        df=model.df_error,
     )
 
 

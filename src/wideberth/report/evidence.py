@@ -4,13 +4,14 @@ from __future__ import annotations
 
 from wideberth.chain.record import Record
 from wideberth.decide.priorities import FARTHEST
-from wideberth.fit.records import Model
+from wideberth.fit.records import LeftOutRun, Model
 from wideberth.report.assurance import assurance
 from wideberth.report.blocks import Block, Bullets, Drawing, Heading, PageBreak, Paragraph, Table
 from wideberth.report.figures import draw_line, draw_map, draw_margins, draw_residuals
 from wideberth.report.frontier_figure import draw_frontier
 from wideberth.report.give_up_words import bound_words, step_words
-from wideberth.report.numbers import format_value, named, with_unit
+from wideberth.report.left_out_words import every_run_sentences
+from wideberth.report.numbers import format_range, format_value, named, with_unit
 from wideberth.report.rows import frontier_row
 from wideberth.report.style import to_svg
 from wideberth.report.wording import (
@@ -50,6 +51,7 @@ def evidence(record: Record) -> tuple[Block, ...]:
         *assurance(record),
         *_goals(record),
         *_models(record),
+        *_left_out(record),
         *_geometry(record),
         Heading(3, "Methods and sources"),
         Bullets("", tuple(_METHODS.strip().splitlines())),
@@ -318,6 +320,41 @@ def _coefficients(model: Model) -> Table:
         f"{model.response}{unit}: coefficients in coded units",
         ("Term", "Coefficient", "Standard error", "t", "p"),
         rows,
+    )
+
+
+def _left_out(record: Record) -> list[Block]:
+    study = record.study
+    if not study.left_out:
+        return []
+    rows = tuple(
+        (str(run.row), model.response, *_left_out_cells(run, model.unit), run.reason)
+        for model in record.models.models
+        for run in model.left_out
+    )
+    header = ("Row", "Response", "Measured", "Expected without it", "95 % of single values")
+    said = [one.words() for one in study.left_out]
+    if record.every_run is not None:
+        said += every_run_sentences(record.every_run, record.choice, study)
+    blocks: list[Block] = [
+        Heading(3, "Runs left out"),
+        Paragraph(
+            "These rows were measured but not fitted, for the reasons stated; beside them stands"
+            " what the answer would be with every run."
+        ),
+        Bullets("", tuple(said)),
+    ]
+    if rows:
+        blocks.append(Table("What the other runs expect of them", (*header, "Reason"), rows))
+    return blocks
+
+
+def _left_out_cells(run: LeftOutRun, unit: str) -> tuple[str, str, str]:
+    half = (run.interval[1] - run.interval[0]) / 2 if run.interval else None
+    return (
+        with_unit(format_value(run.observed, half), unit),
+        with_unit(format_value(run.expected, half), unit),
+        "" if run.interval is None else format_range(*run.interval, half),
     )
 
 

@@ -41,7 +41,8 @@ def read_study(directory: Path | str) -> Study:
         # the sheet can still be read against the names when those are sound
         raise InputError([*found, *_sheet_faults(folder, statement)])
     factors, responses = statement.factors(), statement.responses()
-    sheet = read_sheet(folder, tables.study.runs, factors, responses)
+    left_out = statement.left_out()
+    sheet = read_sheet(folder, tables.study.runs, factors, responses, left_out)
     late = [*sheet.faults, *statement.block_faults(sheet)]
     if late or sheet.runs is None:
         raise InputError(late)
@@ -67,6 +68,9 @@ def read_study(directory: Path | str) -> Study:
         runs=sheet.runs,
         sha256=hashes,
         notes=sheet.notes,
+        left_out=left_out,
+        every_run=sheet.every_run,
+        assays=sheet.assays,
     )
 
 

@@ -87,6 +87,13 @@ class ModelTable(_Table):
     transform: Literal["none"] = "none"
 
 
+class KnownSdTable(_Table):
+    """``known_sd`` of a response."""
+
+    value: Annotated[Number, Field(gt=0)]
+    df: Annotated[int, Field(ge=1)]
+
+
 class ResponseTable(_Table):
     """``[responses.NAME]``."""
 
@@ -94,6 +101,7 @@ class ResponseTable(_Table):
     goal: GoalTable | None = None
     limit: LimitTable | None = None
     model: ModelTable | None = None
+    known_sd: KnownSdTable | None = None
     formula: dict[str, Number] | None = None
 
 
@@ -124,6 +132,14 @@ class BlocksTable(_Table):
     future: Literal["recur", "sample"]
 
 
+class LeaveOutTable(_Table):
+    """One of ``[[leave_out]]``."""
+
+    rows: Annotated[list[int], Field(min_length=1)]
+    reason: Text
+    responses: Annotated[list[Text], Field(min_length=1)] | None = None
+
+
 class StudyFile(_Table):
     """The whole file."""
 
@@ -134,6 +150,7 @@ class StudyFile(_Table):
     constraints: list[ConstraintTable] = Field(default_factory=list)
     region: RegionTable = RegionTable()
     blocks: BlocksTable | None = None
+    leave_out: list[LeaveOutTable] = Field(default_factory=list)
     today: dict[str, Number | str] = Field(default_factory=dict)
     plan: dict[str, Any] = Field(default_factory=dict)
     memo: dict[str, Any] = Field(default_factory=dict)
@@ -147,10 +164,12 @@ _TABLES: dict[str, type[BaseModel]] = {
     "responses.*.goal": GoalTable,
     "responses.*.limit": LimitTable,
     "responses.*.model": ModelTable,
+    "responses.*.known_sd": KnownSdTable,
     "constraints.*": ConstraintTable,
     "region": RegionTable,
     "region.keep": RadiusTable,
     "blocks": BlocksTable,
+    "leave_out.*": LeaveOutTable,
     "": StudyFile,
 }
 
@@ -193,7 +212,9 @@ def _own_path(location: tuple[int | str, ...]) -> KeyPath:
 
 def _fault(detail: Any, path: KeyPath, lines: Mapping[KeyPath, int]) -> Fault:
     kind, value, limits = detail["type"], detail["input"], detail.get("ctx", {})
-    where, key = place(path, lines), str(path[-1]) if path else ""
+    # an item of a list is known by the list's name
+    key = next((part for part in reversed(path) if isinstance(part, str)), "")
+    where = place(path, lines)
     if kind == "extra_forbidden":
         known = _known_keys(path[:-1])
         near = get_close_matches(key, known, n=1, cutoff=0.6)
@@ -230,7 +251,7 @@ _ALLOWED = {
 def _known_keys(table: KeyPath) -> list[str]:
     parts = [
         "*"
-        if i and str(table[0]) in ("factors", "responses", "constraints") and i == 1
+        if i and str(table[0]) in ("factors", "responses", "constraints", "leave_out") and i == 1
         else str(part)
         for i, part in enumerate(table)
     ]

@@ -6,20 +6,23 @@ import csv
 import hashlib
 import io
 import re
-from collections.abc import Iterator
-from dataclasses import dataclass
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 
 import numpy as np
 
 from wideberth.errors import Fault
+from wideberth.study.gathering import gather
 from wideberth.study.naming import nearest
 from wideberth.study.records import (
-    BoolArray,
+    Assays,
     CategoricalFactor,
     Factor,
     Finding,
+    FloatArray,
     IntArray,
+    LeftOut,
     NumericFactor,
     Response,
     Runs,
@@ -27,7 +30,7 @@ from wideberth.study.records import (
 
 KINDS = ("factorial", "axial", "centre", "confirm", "failed")
 _HEADER = re.compile(r"(?P<name>.*?)\s*(?:\[(?P<unit>[^\]]*)\])?\s*")
-_UNFITTED = ("confirm", "failed")
+_OWN_COLUMNS = ("run", "block", "kind", "note", "weight", "sample")
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -38,6 +41,8 @@ class SheetContent:
     faults: tuple[Fault, ...]
     notes: tuple[Finding, ...] = ()
     sha256: str = ""
+    every_run: Runs | None = None
+    assays: Mapping[str, Assays] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, slots=True)
@@ -51,7 +56,11 @@ class _Table:
 
 
 def read_sheet(
-    folder: Path, file: str, factors: tuple[Factor, ...], responses: tuple[Response, ...]
+    folder: Path,
+    file: str,
+    factors: tuple[Factor, ...],
+    responses: tuple[Response, ...],
+    left_out: tuple[LeftOut, ...] = (),
 ) -> SheetContent:
     """Read the run sheet of a study folder against its factors and responses."""
     path = folder / file
@@ -72,10 +81,8 @@ def read_sheet(
     table, faults = _split(raw, file)
     if table is None:
         return SheetContent(None, faults)
-    content = _interpret(table, factors, responses)
-    return SheetContent(
-        content.runs, content.faults, content.notes, hashlib.sha256(raw).hexdigest()
-    )
+    content = _interpret(table, factors, responses, left_out)
+    return replace(content, sha256=hashlib.sha256(raw).hexdigest())
 
 
 def _split(raw: bytes, file: str) -> tuple[_Table | None, tuple[Fault, ...]]:
@@ -104,7 +111,10 @@ def _split(raw: bytes, file: str) -> tuple[_Table | None, tuple[Fault, ...]]:
 
 
 def _interpret(
-    table: _Table, factors: tuple[Factor, ...], responses: tuple[Response, ...]
+    table: _Table,
+    factors: tuple[Factor, ...],
+    responses: tuple[Response, ...],
+    left_out: tuple[LeftOut, ...],
 ) -> SheetContent:
     columns, faults = _columns(table, factors, responses)
     n_cells = len(table.header)
@@ -120,10 +130,9 @@ def _interpret(
         return SheetContent(None, tuple(faults))
     reader = _Cells(table, columns)
     kinds = tuple(reader.kinds(faults))
-    fitted = np.array([kind not in _UNFITTED for kind in kinds], dtype=np.bool_)
     numeric = [f for f in factors if isinstance(f, NumericFactor)]
     categorical = [f for f in factors if isinstance(f, CategoricalFactor)]
-    measured = [r for r in responses if r.formula is None]
+    measured = tuple(r for r in responses if r.formula is None)
     n = len(table.rows)
     actual = np.array([reader.factor(f, faults) for f in numeric]).reshape(len(numeric), n).T
     levels = np.array([reader.levels(f, faults) for f in categorical], dtype=np.int64)
@@ -140,11 +149,23 @@ def _interpret(
         kind=kinds,
         order=reader.order(),
         note=tuple(reader.texts("note")),
+        weight=reader.weights(faults),
+        others={name: tuple(reader.texts(name)) for name in reader.others(factors, responses)},
     )
-    if not faults:
-        faults += _enough(runs, fitted, measured, table.file)
-    notes = _missing_notes(runs, fitted, measured)
-    return SheetContent(None if faults else runs, tuple(faults), notes)
+    if faults:
+        return SheetContent(None, tuple(faults))
+    gathered, late = gather(runs, list(reader.texts("sample")), left_out, measured)
+    if gathered is None:
+        return SheetContent(None, late)
+    faults = _enough(gathered.runs, measured)
+    notes = _missing_notes(gathered.every_run or gathered.runs, measured)
+    return SheetContent(
+        None if faults else gathered.runs,
+        tuple(faults),
+        notes,
+        every_run=gathered.every_run,
+        assays=gathered.assays,
+    )
 
 
 def _columns(
@@ -159,7 +180,7 @@ def _columns(
         match = _HEADER.fullmatch(heading)
         name = match["name"] if match else heading
         unit = match["unit"] if match else None
-        if name in columns and (name in units or name in ("run", "block", "kind", "note")):
+        if name in columns and (name in units or name in _OWN_COLUMNS):
             faults.append(Fault(f"two columns are called {name}", where, "rename or delete one"))
         columns.setdefault(name, index)
         if unit is not None and name in units and unit.strip() != units[name]:
@@ -279,6 +300,28 @@ class _Cells:
         places = [different.index(name) if name else 0 for name in names]
         return different, np.array(places, dtype=np.int64)
 
+    def weights(self, faults: list[Fault]) -> FloatArray | None:
+        if "weight" not in self.columns:
+            return None
+        numbers = []
+        for row, cell in self._column("weight"):
+            number = self._number(cell)
+            if number is None or number <= 0:
+                shown = f"'{cell}'" if cell else "empty"
+                faults.append(
+                    Fault(
+                        f"the weight is {shown}",
+                        self._where(row, "weight"),
+                        "give a number above 0: how many single batches the row is worth",
+                    )
+                )
+            numbers.append(1.0 if number is None else number)
+        return np.array(numbers)
+
+    def others(self, factors: tuple[Factor, ...], responses: tuple[Response, ...]) -> list[str]:
+        known = {f.name for f in factors} | {r.name for r in responses} | set(_OWN_COLUMNS)
+        return [name for name in self.columns if name and name not in known]
+
     def order(self) -> tuple[int, ...] | None:
         cells = list(self.texts("run"))
         if not all(re.fullmatch(r"\d+", cell) for cell in cells):
@@ -291,15 +334,17 @@ def _decimal_hint(cell: str) -> str:
     return "; with decimal commas, separate the columns by semicolons" if comma else ""
 
 
-def _enough(runs: Runs, fitted: BoolArray, measured: list[Response], file: str) -> list[Fault]:
+def _enough(runs: Runs, measured: tuple[Response, ...]) -> list[Fault]:
+    fitted = runs.fitted
     settings = np.concatenate([runs.numeric_actual, runs.levels], axis=1)[fitted]
     if len(np.unique(settings, axis=0)) < 2:
         what = "fewer than two different settings were run"
-        return [Fault(what, file, "add runs at other settings (confirm and failed are not fitted)")]
+        mend = "add runs at other settings (confirm, failed and left-out runs are not fitted)"
+        return [Fault(what, runs.file, mend)]
     return [
         Fault(
             f"no run has a value of {response.name}",
-            f"{file}, column {response.name}",
+            f"{runs.file}, column {response.name}",
             "fill in what was measured",
         )
         for i, response in enumerate(measured)
@@ -307,12 +352,12 @@ def _enough(runs: Runs, fitted: BoolArray, measured: list[Response], file: str) 
     ]
 
 
-def _missing_notes(runs: Runs, fitted: BoolArray, measured: list[Response]) -> tuple[Finding, ...]:
+def _missing_notes(runs: Runs, measured: tuple[Response, ...]) -> tuple[Finding, ...]:
     notes = []
     for i, response in enumerate(measured):
         empty = [
             str(row)
-            for row, used, value in zip(runs.rows, fitted, runs.measured[:, i], strict=True)
+            for row, used, value in zip(runs.rows, runs.fitted, runs.measured[:, i], strict=True)
             if used and np.isnan(value)
         ]
         if empty:

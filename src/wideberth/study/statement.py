@@ -14,6 +14,8 @@ from wideberth.study.records import (
     Factor,
     Formula,
     Goal,
+    KnownSd,
+    LeftOut,
     Limit,
     NumericFactor,
     Response,
@@ -54,6 +56,7 @@ class Statement:
         for name, response in self.tables.responses.items():
             yield from self._response_faults(name, response)
         yield from self._constraint_faults()
+        yield from self._leave_out_faults()
         yield from self._today_faults()
 
     def _factor_faults(self, name: str, table: FactorTable) -> Iterator[Fault]:
@@ -129,10 +132,11 @@ class Statement:
         where = self.at("responses", name, "formula")
         if not table.formula:
             yield Fault("the formula is empty", where, "state at least one term")
-        if table.model is not None:
-            yield Fault(
-                f"{name} has a formula and a model", where, "an exact response is not fitted"
-            )
+        for key in ("model", "known_sd"):
+            if getattr(table, key) is not None:
+                yield Fault(
+                    f"{name} has a formula and a {key}", where, "an exact response is not fitted"
+                )
         for term in table.formula:
             yield from self._term_faults(name, term)
 
@@ -248,6 +252,17 @@ class Statement:
                         "constraints take factors on a linear scale",
                     )
 
+    def _leave_out_faults(self) -> Iterator[Fault]:
+        measured = [name for name, table in self.tables.responses.items() if table.formula is None]
+        for i, table in enumerate(self.tables.leave_out):
+            for name in table.responses or ():
+                if name not in measured:
+                    yield Fault(
+                        f"[[leave_out]] names no measured response: {name}",
+                        self.at("leave_out", i, "responses"),
+                        nearest(name, measured, "use the names of measured responses"),
+                    )
+
     def _today_faults(self) -> Iterator[Fault]:
         for name, value in self.tables.today.items():
             where = self.at("today", name)
@@ -293,6 +308,13 @@ class Statement:
         """Give the factors as records, in the order stated."""
         return tuple(_factor(name, table) for name, table in self.tables.factors.items())
 
+    def left_out(self) -> tuple[LeftOut, ...]:
+        """Give what is left out of the fit, as records."""
+        return tuple(
+            LeftOut(tuple(table.rows), table.reason, tuple(table.responses or ()))
+            for table in self.tables.leave_out
+        )
+
     def responses(self) -> tuple[Response, ...]:
         """Give the responses as records, in the order stated."""
         return tuple(_response(name, table) for name, table in self.tables.responses.items())
@@ -322,6 +344,9 @@ def _response(name: str, table: ResponseTable) -> Response:
         limit=None if table.limit is None else _limit(table.limit, exact=table.formula is not None),
         order=table.model.order if table.model else None,
         formula=None if table.formula is None else _formula(table.formula),
+        known_sd=None
+        if table.known_sd is None
+        else KnownSd(table.known_sd.value, table.known_sd.df),
     )
 
 
