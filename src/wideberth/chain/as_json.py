@@ -174,6 +174,10 @@ def _model(model: Model) -> Json:
         content["lack_of_fit"] = _plain(model.lack_of_fit)
     if model.left_out:
         content["left_out"] = [_plain(run) for run in model.left_out]
+    if model.between is not None:
+        between = _plain(model.between)
+        del between["covariance_within"]
+        content["between_blocks"] = between
     if model.pooled is not None:
         content["pooled"] = _plain(model.pooled)
     return content

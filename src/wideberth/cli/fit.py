@@ -66,8 +66,9 @@ def _print_model(model: Model) -> None:
     )
     parts = [f"{model.n_runs} runs", f"{model.df_residual} residual degrees of freedom"]
     if model.s is not None:
-        pooled = "" if model.pooled is None else f" on {model.df_error} with the history"
-        parts.append(f"s {with_unit(format_value(model.s, model.s), model.unit)}{pooled}")
+        of = "" if model.between is None else " of a batch in a new block"
+        of += "" if model.pooled is None else f" on {model.df_error} with the history"
+        parts.append(f"s {with_unit(format_value(model.s, model.s), model.unit)}{of}")
     for label, value in (
         ("R2", model.r2),
         ("adjusted R2", model.r2_adjusted),

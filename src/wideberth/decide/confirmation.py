@@ -30,6 +30,12 @@ def confirmation_runs(
     guarded = [side for side in problem.sides if problem.guarding[side.response].smooth is not None]
     if not guarded:
         return None
+    if any(problem.models[side.response].between is not None for side in guarded):
+        return Confirmation(
+            None,
+            "confirmation runs must come from several new blocks, one run in each; how many would"
+            " prove the limits is not computed where blocks are a sample",
+        )
     for n_runs in range(1, MOST_RUNS + 1):
         if all(_expected(problem, side, levels, x, n_runs) for side in guarded):
             runs = "run" if n_runs == 1 else "runs"
@@ -49,12 +55,13 @@ def confirmation_ranges(
 ) -> dict[str, ConfirmationRange]:
     """Predict one run and the mean of three at a coded setting (k,), for responses with noise.
 
-    Two-sided prediction intervals, all responses together with 95 % after Bonferroni.
+    Two-sided prediction intervals, all responses together with 95 % after Bonferroni; where
+    blocks are a sample, of runs in new blocks, one in each.
     """
     noisy = [m for m in problem.models.models if not m.exact and m.s and m.df_error]
+    confidence = 1.0 - 0.05 / (2 * max(len(noisy), 1))
     result = {}
     for model in noisy:
-        t = float(stdtrit(model.df_error, 1.0 - 0.05 / (2 * len(noisy))))
         ends = {}
         for n_runs in (1, 3):
             lows, highs = [], []
@@ -63,7 +70,10 @@ def confirmation_ranges(
                 terms = features(x)
                 mean = float(terms @ at.coefficients)
                 leverage = float(terms @ at.covariance @ terms)
-                half = t * at.s * float(np.sqrt(leverage + 1.0 / n_runs))
+                variance = leverage + 1.0 / n_runs
+                df = float(model.degrees(variance, 1.0 / n_runs, confidence))
+                t = float(stdtrit(df, confidence))
+                half = t * at.s * float(np.sqrt(variance))
                 lows.append(mean - half)
                 highs.append(mean + half)
             ends[n_runs] = (min(lows), max(highs))

@@ -170,7 +170,8 @@ def _limit_sides(study: Study) -> tuple[LimitSide, ...]:
 
 def judged_blocks(model: Model, study: Study) -> tuple[int | None, ...]:
     """Give the blocks at which a limit must hold: each one that recurs, or none at all."""
-    if any(term.block is not None for term in model.terms):
+    recur = study.future_blocks != "sample"
+    if recur and any(term.block is not None for term in model.terms):
         return tuple(range(len(study.runs.blocks)))
     return (None,)
 
@@ -266,6 +267,10 @@ def _guarding(models: Models, response: Response, bare: tuple[Arena, ...], seed:
     leverages = np.stack(
         [np.einsum("np,pq,nq->n", terms @ m, model.covariance, terms @ m) for m in maps]
     )
+    # the fewest degrees of freedom anywhere, so that the guard is too wide elsewhere, never narrow
+    extra = 0.0 if guard.kind == "mean" else 1.0
+    degrees = model.degrees(leverages + extra, extra, guard.confidence)
+    guard = replace(guard, df=float(degrees.min()))
     smooth = SmoothGuard.between(guard, float(leverages.min()), float(leverages.max()))
     factor = 1.0
     if limit.point == "chosen":

@@ -13,12 +13,13 @@ from scipy.special import stdtrit
 
 from wideberth.fit.columns import model_matrix
 from wideberth.fit.least_squares import LeastSquares
-from wideberth.fit.records import LeftOutRun, Model, Pooled, Term
+from wideberth.fit.records import Between, LeftOutRun, Model, Pooled, Term
 from wideberth.fit.wording import with_unit
 from wideberth.study.records import Assays, Finding, IntArray, Response, Study
 
 _SIGNIFICANT = 0.05
 _NEAR_ONE = 0.05
+_FEW_BLOCKS = 5
 
 
 def left_out_runs(
@@ -72,6 +73,8 @@ def circumstances(study: Study, response: Response, model: Model) -> Iterator[Fi
         yield from _weights(model)
     if model.pooled is not None:
         yield _pooled(model, model.pooled)
+    if model.between is not None:
+        yield _between(model, model.between)
     assays = study.assays.get(response.name)
     if assays is not None and assays.counts[-1] > 1:
         yield _assays(model, assays, limited=response.limit is not None)
@@ -124,6 +127,26 @@ def _pooled(model: Model, pooled: Pooled) -> Finding:
         f" stands {reach[1]:.2f} instead of {reach[0]:.2f} standard errors off."
     )
     return Finding("fine", text, name)
+
+
+def _between(model: Model, between: Between) -> Finding:
+    within, sd, batch = (
+        with_unit(size, model.unit) for size in (between.s_within, between.sd, model.s or 0.0)
+    )
+    text = (
+        f"{model.response}: standard deviation {within} within blocks and {sd} between them;"
+        f" a batch in a new block varies by {batch}"
+    )
+    if between.df is None:
+        return Finding("fine", f"{text} (the figure between blocks was stated).", model.response)
+    text += f". The {between.n_blocks} blocks give {between.df} {_degrees(between.df)} for it"
+    if between.df < _FEW_BLOCKS:
+        text += ", so intervals and guards are wide; more blocks or a stated block_sd would help"
+    return Finding("look" if between.df < _FEW_BLOCKS else "fine", text + ".", model.response)
+
+
+def _degrees(df: int) -> str:
+    return "degree of freedom" if df == 1 else "degrees of freedom"
 
 
 def _assays(model: Model, assays: Assays, *, limited: bool) -> Finding:

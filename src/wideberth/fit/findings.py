@@ -42,9 +42,10 @@ def findings_of(model: Model, response: Response, y: FloatArray) -> tuple[Findin
 
 
 def _summary(model: Model) -> Finding:
+    s = model.s if model.between is None else model.between.s_within
     text = (
         f"{model.response}: the model describes the runs (adjusted R2 {model.r2_adjusted:.2f},"
-        f" PRESS R2 {model.r2_press:.2f}, s {with_unit(model.s or 0.0, model.unit)})."
+        f" PRESS R2 {model.r2_press:.2f}, s {with_unit(s or 0.0, model.unit)})."
     )
     return Finding("fine", text, model.response)
 

@@ -12,6 +12,7 @@ import numpy as np
 from scipy.special import stdtr
 
 from wideberth.errors import Fault, RefusedError
+from wideberth.fit.between import batch_units, between_blocks, unknown_between
 from wideberth.fit.circumstances import circumstances, left_out_runs
 from wideberth.fit.columns import (
     degree,
@@ -52,7 +53,7 @@ def fit(study: Study) -> Models:
         if response.formula is not None:
             models.append(exact_model(study, response))
             continue
-        fault = _unsupported_order(study, response)
+        fault = _unsupported_order(study, response) or _unknown_between(study, response)
         if fault is not None:
             faults.append(fault)
         else:
@@ -86,6 +87,12 @@ def _unsupported_order(study: Study, response: Response) -> Fault | None:
         f" cannot tell apart: {'; '.join(sets)}",
         f"study.toml, responses.{response.name}.model.order",
         "leave the order out to fit what can be told apart, lower it, or add runs",
+    )
+
+
+def _unknown_between(study: Study, response: Response) -> Fault | None:
+    return unknown_between(
+        study, response, _terms(study, response, rows_fitted(study, response))[0]
     )
 
 
@@ -162,13 +169,21 @@ def _moving_terms(
     return terms, found
 
 
-def _fitted_model(study: Study, response: Response) -> Model:
-    rows = rows_fitted(study, response)
+def _terms(
+    study: Study, response: Response, rows: IntArray
+) -> tuple[tuple[Term, ...], tuple[Finding, ...]]:
+    """Choose a model's terms, in printed order, with what is to be said about the choice."""
+    found: tuple[Finding, ...] = ()
     if response.order is None:
         terms, found = _supported_terms(study, response, rows)
     else:
-        terms, found = model_terms(study, response.order, study.runs.block[rows]), ()
-    terms = tuple(terms[i] for i in in_printed_order(terms))
+        terms = model_terms(study, response.order, study.runs.block[rows])
+    return tuple(terms[i] for i in in_printed_order(terms)), found
+
+
+def _fitted_model(study: Study, response: Response) -> Model:
+    rows = rows_fitted(study, response)
+    terms, found = _terms(study, response, rows)
     y = study.runs.measured[rows, study.measured.index(response)]
     weight = None if study.runs.weight is None else study.runs.weight[rows]
     fitted = least_squares(model_matrix(study, terms, rows), y, weight)
@@ -177,6 +192,10 @@ def _fitted_model(study: Study, response: Response) -> Model:
     s, df, pooled = batch_error(fitted, response.known_sd, exact_fit=exact_fit)
     if s is None:
         reasons["s"] = "there are as many terms as runs, so nothing is left to estimate the noise"
+    between = None if s is None else between_blocks(study, response, terms, fitted, s, df)
+    within, covariance = s, fitted.covariance
+    if between is not None:
+        s, covariance = batch_units(between, terms)
     lack, why = (
         (None, "the model describes the runs exactly")
         if exact_fit
@@ -194,8 +213,8 @@ def _fitted_model(study: Study, response: Response) -> Model:
         order=max(degree(term, len(study.numeric)) for term in terms),
         terms=terms,
         coefficients=fitted.coefficients,
-        covariance=fitted.covariance,
-        table=_table(terms, fitted, s, df),
+        covariance=covariance,
+        table=_table(terms, fitted, within, df),
         n_runs=len(rows),
         df_residual=fitted.df,
         df_error=df,
@@ -206,12 +225,13 @@ def _fitted_model(study: Study, response: Response) -> Model:
         r2_press=r2_press,
         lack_of_fit=lack,
         runs=_runs(study, rows, y, fitted, exact_fit=exact_fit),
-        noise_free=exact_fit and pooled is None,
+        noise_free=exact_fit and not s,
         findings=found,
         grade="fine",
         reasons=reasons,
-        left_out=left_out_runs(study, response, terms, fitted, s, df),
+        left_out=left_out_runs(study, response, terms, fitted, within, df),
         pooled=pooled,
+        between=between,
     )
     return _graded(study, model, response, y)
 

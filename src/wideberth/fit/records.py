@@ -11,6 +11,8 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 
 import numpy as np
+import numpy.typing as npt
+from scipy.special import ndtri, stdtridf, stdtrit
 
 from wideberth.quadratic.terms import n_terms
 from wideberth.study.records import CategoricalFactor, Finding, FloatArray, Grade, Study
@@ -115,6 +117,57 @@ class Pooled:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
+class Between:
+    """The variance between blocks that are a sample of those to come.
+
+    Attributes
+    ----------
+    sd : float
+        Standard deviation between blocks; 0 where their effects are no larger than noise.
+    df : int or None
+        Degrees of freedom behind it; ``None`` where it was stated.
+    n_blocks : int
+        b, the blocks that were run.
+    effects : ndarray, shape (b,)
+        Fitted effects of the blocks, which sum to 0.
+    mean_square : float
+        Of the effects, on ``df``: estimates ``sd**2 + noise * s_within**2``.
+    noise : float
+        What the noise within blocks adds to it, in units of its variance.
+    s_within, df_within : float, int
+        Standard deviation within blocks and its degrees of freedom.
+    covariance_within : ndarray, shape (q, q)
+        Unscaled covariance of the coefficients within blocks: (X'WX)^-1.
+    """
+
+    sd: float
+    df: int | None
+    n_blocks: int
+    effects: FloatArray
+    mean_square: float
+    noise: float
+    s_within: float
+    df_within: int
+    covariance_within: FloatArray
+
+    def degrees(self, variance: FloatArray, extra: float, confidence: float) -> FloatArray:
+        """Give the degrees of freedom whose t quantile serves an estimated variance, any shape.
+
+        ``variance`` is in the response's unit squared; ``extra`` is 0 for a mean, 1 for one batch
+        in a new block, 1/n for the average of n batches in new blocks; ``confidence`` one-sided.
+        The quantile is Cochran's average of those of the two parts (`fit.between`).
+        """
+        between = (1.0 / self.n_blocks + extra) * self.mean_square
+        within = np.maximum(variance - between, 0.0)
+        inner = float(stdtrit(self.df_within, confidence))
+        outer = float(stdtrit(self.df, confidence) if self.df else ndtri(confidence))
+        t: FloatArray = (within * inner + between * outer) / (within + between)
+        # from the one quantile to the degrees of freedom that have it
+        result: FloatArray = np.asarray(stdtridf(confidence, t), dtype=np.float64)
+        return result
+
+
+@dataclass(frozen=True, slots=True, eq=False)
 class Model:
     """One response's model.
 
@@ -129,15 +182,17 @@ class Model:
         Coded units.
     covariance : ndarray, shape (q, q)
         Unscaled: (X'WX)^-1; the coefficients' covariance is ``s**2`` times this. Zero if exact.
+        Where blocks are a sample, the constant's part carries their variance.
     n_runs : int
         Runs that were fitted (0 if exact).
     df_residual : int
         Of the runs alone; 0 if exact or saturated.
     df_error : int
-        Degrees of freedom of ``s``: those of the runs, and of the history that is pooled.
+        Degrees of freedom of the standard deviation within blocks: those of the runs, and of the
+        history that is pooled.
     s : float or None
-        Standard deviation of one batch of weight 1; 0.0 for an exact model and an exact fit,
-        ``None`` when no degrees of freedom are left.
+        Standard deviation of one batch of weight 1, in a new block where blocks are a sample; 0.0
+        for an exact model and an exact fit, ``None`` when no degrees of freedom are left.
     noise_free : bool
         Measured, with residuals at rounding level.
     reasons : mapping
@@ -170,6 +225,24 @@ class Model:
     reasons: Mapping[str, str] = field(default_factory=dict)
     left_out: tuple[LeftOutRun, ...] = ()
     pooled: Pooled | None = None
+    between: Between | None = None
+
+    def degrees(self, variance: npt.ArrayLike, extra: float, confidence: float) -> FloatArray:
+        """Give the degrees of freedom to take a t quantile with, of the variance's shape.
+
+        Parameters
+        ----------
+        variance : array_like
+            In units of ``s**2``: a leverage plus ``extra``.
+        extra : float
+            0 for a mean, 1 for one batch, 1/n for the average of n batches.
+        confidence : float
+            Of the quantile, one-sided.
+        """
+        own = np.asarray(variance, dtype=np.float64)
+        if self.between is None or not self.s:
+            return np.full_like(own, self.df_error)
+        return self.between.degrees(own * self.s**2, extra, confidence)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -200,7 +273,7 @@ class Surface:
     s : float
         Standard deviation of one batch (0.0 where there is no noise).
     df : int
-        Degrees of freedom of s (0 where there are none).
+        Degrees of freedom of comparisons within blocks (0 where there are none).
     """
 
     coefficients: FloatArray

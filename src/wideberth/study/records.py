@@ -127,6 +127,8 @@ class Response:
     """Stated order of the model; ``None``: 2, or what the runs support."""
     formula: Formula | None = None
     known_sd: KnownSd | None = None
+    block_sd: float | None = None
+    """Standard deviation between blocks that are a sample; ``None``: estimated from the runs."""
 
 
 @dataclass(frozen=True, slots=True)

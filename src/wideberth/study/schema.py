@@ -102,6 +102,7 @@ class ResponseTable(_Table):
     limit: LimitTable | None = None
     model: ModelTable | None = None
     known_sd: KnownSdTable | None = None
+    block_sd: Annotated[Number, Field(gt=0)] | None = None
     formula: dict[str, Number] | None = None
 
 

@@ -132,7 +132,7 @@ class Statement:
         where = self.at("responses", name, "formula")
         if not table.formula:
             yield Fault("the formula is empty", where, "state at least one term")
-        for key in ("model", "known_sd"):
+        for key in ("model", "known_sd", "block_sd"):
             if getattr(table, key) is not None:
                 yield Fault(
                     f"{name} has a formula and a {key}", where, "an exact response is not fitted"
@@ -289,14 +289,24 @@ class Statement:
             yield Fault(
                 f"the sheet has blocks ({', '.join(blocks)}), but [blocks] is not stated",
                 STUDY_FILE,
-                "state future = 'recur' if the same blocks come again",
+                "state future = 'recur' if the same blocks come again (two reactors), 'sample' if"
+                " they are a sample of many (days, lots)",
             )
-        if stated is not None and stated.future == "sample":
-            yield Fault(
-                "blocks that are a sample of days or lots are not served yet",
-                self.at("blocks", "future"),
-                "use 'recur' only if the same blocks, say two reactors, come again",
-            )
+        sample = stated is not None and stated.future == "sample"
+        for name, table in self.tables.responses.items():
+            if table.block_sd is not None and not sample:
+                yield Fault(
+                    f"{name} has a block_sd, but the blocks are not a sample",
+                    self.at("responses", name, "block_sd"),
+                    "state [blocks] future = 'sample', or take block_sd out",
+                )
+            if sample and table.limit is not None and table.limit.guard == "share":
+                yield Fault(
+                    f"{name} is guarded by a share of batches, which cannot be promised exactly"
+                    " where blocks are a sample",
+                    self.at("responses", name, "limit"),
+                    "use guard = 'batch'",
+                )
         if stated is not None and not blocks:
             yield Fault(
                 "[blocks] is stated, but the sheet has no block column",
@@ -347,6 +357,7 @@ def _response(name: str, table: ResponseTable) -> Response:
         known_sd=None
         if table.known_sd is None
         else KnownSd(table.known_sd.value, table.known_sd.df),
+        block_sd=table.block_sd,
     )
 
 
