@@ -17,6 +17,7 @@ from wideberth.decide.frontier import Frontier
 from wideberth.decide.give_ups import GiveUp
 from wideberth.decide.records import Choice
 from wideberth.errors import Fault
+from wideberth.fit.equations import own_units
 from wideberth.fit.records import Model, Models
 from wideberth.operate.records import Robustness, Window
 from wideberth.study.records import Finding, Study
@@ -59,7 +60,10 @@ def fit_json(models: Models) -> Json:
     """Give the answer of ``fit``."""
     return {
         **_head("fit", models.study),
-        "responses": {model.response: _model(model) for model in models.models},
+        "responses": {
+            model.response: {**_model(model), **_equations(models.study, model)}
+            for model in models.models
+        },
     }
 
 
@@ -165,6 +169,8 @@ def _model(model: Model) -> Json:
         "r2_press": model.r2_press,
         "lack_of_fit": None,
         "noise_free": model.noise_free,
+        "anova": [_plain(part) for part in model.anova],
+        "checks": [_plain(check) for check in model.checks],
         "runs": [_plain(run) for run in model.runs],
         "findings": [asdict(finding) for finding in model.findings],
         "grade": model.grade,
@@ -181,6 +187,10 @@ def _model(model: Model) -> Json:
     if model.pooled is not None:
         content["pooled"] = _plain(model.pooled)
     return content
+
+
+def _equations(study: Study, model: Model) -> Json:
+    return {"own_units": [_plain(equation) for equation in own_units(study, model)]}
 
 
 def _covariance(model: Model) -> Json:

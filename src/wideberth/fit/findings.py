@@ -10,7 +10,7 @@ from __future__ import annotations
 import numpy as np
 from scipy.special import stdtrit
 
-from wideberth.fit.records import Model
+from wideberth.fit.records import LackOfFit, Model
 from wideberth.fit.wording import with_unit
 from wideberth.study.records import Finding, FloatArray, Grade, Limit, Response
 
@@ -36,6 +36,7 @@ def findings_of(model: Model, response: Response, y: FloatArray) -> tuple[Findin
         text = f"{name}: the model describes the runs exactly; there is no noise to judge it by."
         return (Finding("look", text, name),)
     found = [*_fit_itself(model), *_lack(model, response.limit, y), *_runs(model)]
+    found += [Finding(c.grade, c.text, name) for c in model.checks if c.grade != "fine"]
     if not found and model.df_residual > 0:
         found.append(_summary(model))
     return tuple(found)
@@ -82,9 +83,11 @@ def _fit_itself(model: Model) -> list[Finding]:
 
 def _lack(model: Model, limit: Limit | None, y: FloatArray) -> list[Finding]:
     lack = model.lack_of_fit
-    if lack is None or lack.p >= _SIGNIFICANT:
+    if lack is None:
         return []
     name = model.response
+    if lack.p >= _SIGNIFICANT:
+        return _could_be_missed(model, lack, limit, float(y.mean()))
     text = (
         f"{name}: the model misses more than repeated runs explain (lack of fit F {lack.f:.3g} on"
         f" {lack.df[0]} and {lack.df[1]}, p {lack.p:.2g}),"
@@ -95,6 +98,22 @@ def _lack(model: Model, limit: Limit | None, y: FloatArray) -> list[Finding]:
         text += f", as much as the mean lies from its limit ({with_unit(distance, model.unit)})."
         return [Finding("do not use", text, name)]
     return [Finding("look", text + ".", name)]
+
+
+def _could_be_missed(
+    model: Model, lack: LackOfFit, limit: Limit | None, mean: float
+) -> list[Finding]:
+    """Say where the repeated runs are too few to show a misfit that would matter."""
+    distance = _distance_to_limit(limit, mean)
+    if distance is None or lack.found_size < distance:
+        return []
+    text = (
+        f"{model.response}: no lack of fit is shown, but repeated runs with {lack.df[1]} degrees of"
+        " freedom find one in 4 of 5 studies only from"
+        f" {with_unit(lack.found_size, model.unit)} on, more than the mean lies from its limit"
+        f" ({with_unit(distance, model.unit)})."
+    )
+    return [Finding("look", text, model.response)]
 
 
 def _distance_to_limit(limit: Limit | None, mean: float) -> float | None:

@@ -35,6 +35,8 @@ class LeastSquares:
     fitted, residuals, leverage : ndarray, shape (n,)
         Residuals in the unit of y; leverages of the weighted fit.
     weight : ndarray, shape (n,)
+    basis : ndarray, shape (n, q)
+        Orthonormal basis of the weighted columns.
     df : int
         n - q.
     rss : float
@@ -47,6 +49,7 @@ class LeastSquares:
     residuals: FloatArray
     leverage: FloatArray
     weight: FloatArray
+    basis: FloatArray
     df: int
     rss: float
 
@@ -79,6 +82,7 @@ def least_squares(
         residuals=residuals,
         leverage=np.minimum((q_factor**2).sum(axis=1), 1.0),
         weight=w,
+        basis=q_factor,
         df=matrix.shape[0] - matrix.shape[1],
         rss=float(w @ residuals**2),
     )

@@ -12,7 +12,9 @@ import numpy as np
 from scipy.special import stdtr
 
 from wideberth.errors import Fault, RefusedError
+from wideberth.fit.anova import by_degree
 from wideberth.fit.between import batch_units, between_blocks, unknown_between
+from wideberth.fit.checks import checks_of
 from wideberth.fit.circumstances import circumstances, left_out_runs
 from wideberth.fit.columns import (
     degree,
@@ -186,7 +188,8 @@ def _fitted_model(study: Study, response: Response) -> Model:
     terms, found = _terms(study, response, rows)
     y = study.runs.measured[rows, study.measured.index(response)]
     weight = None if study.runs.weight is None else study.runs.weight[rows]
-    fitted = least_squares(model_matrix(study, terms, rows), y, weight)
+    matrix = model_matrix(study, terms, rows)
+    fitted = least_squares(matrix, y, weight)
     exact_fit = fitted.df > 0 and is_noise_free(fitted, y)
     reasons: dict[str, str] = {}
     s, df, pooled = batch_error(fitted, response.known_sd, exact_fit=exact_fit)
@@ -232,6 +235,8 @@ def _fitted_model(study: Study, response: Response) -> Model:
         left_out=left_out_runs(study, response, terms, fitted, within, df),
         pooled=pooled,
         between=between,
+        checks=() if exact_fit else checks_of(study, rows, terms, fitted, response.name),
+        anova=by_degree(terms, matrix, y, fitted, lack, len(study.numeric)),
     )
     return _graded(study, model, response, y)
 

@@ -71,6 +71,34 @@ class LackOfFit:
     ss_lack: float
     ss_pure: float
     rms_size: float
+    found_size: float
+    """The size, counted like ``rms_size``, that this test finds in 4 of 5 studies."""
+
+
+@dataclass(frozen=True, slots=True)
+class Check:
+    """One check of what a model takes for granted, in one sentence with its grade.
+
+    ``df`` is ``None`` where p comes from simulated residuals.
+    """
+
+    kind: str
+    statistic: float
+    df: tuple[int, int] | None
+    p: float
+    grade: Grade
+    text: str
+
+
+@dataclass(frozen=True, slots=True)
+class Part:
+    """One line of the analysis of variance; ``f`` and ``p`` are ``None`` if it is not tested."""
+
+    source: str
+    df: int
+    squares: float
+    f: float | None
+    p: float | None
 
 
 @dataclass(frozen=True, slots=True)
@@ -226,6 +254,8 @@ class Model:
     left_out: tuple[LeftOutRun, ...] = ()
     pooled: Pooled | None = None
     between: Between | None = None
+    checks: tuple[Check, ...] = ()
+    anova: tuple[Part, ...] = ()
 
     def degrees(self, variance: npt.ArrayLike, extra: float, confidence: float) -> FloatArray:
         """Give the degrees of freedom to take a t quantile with, of the variance's shape.

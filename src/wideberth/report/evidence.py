@@ -266,7 +266,7 @@ def _models(record: Record) -> list[Block]:
     if any(model.runs for model in record.models.models):
         alt = "Studentized residuals against fitted values of each measured response."
         blocks.append(Drawing(to_svg(draw_residuals(record.models), "residuals"), alt, alt))
-    blocks += [_summary(record)]
+    blocks += [_summary(record), *_checks(record)]
     for model in record.models.models:
         if model.exact:
             blocks.append(Paragraph(f"{model.response} is known exactly by its formula."))
@@ -298,6 +298,21 @@ def _summary(record: Record) -> Table:
         )
     header = ("Response", "Runs", "Residual df", "s", "Adjusted R2", "PRESS R2", "Lack of fit")
     return Table("How well the models describe the runs", header, tuple(rows))
+
+
+def _checks(record: Record) -> list[Block]:
+    models = [model for model in record.models.models if model.checks]
+    kinds = list(dict.fromkeys(check.kind for model in models for check in model.checks))
+    if not kinds:
+        return []
+    rows = []
+    for model in models:
+        found = {check.kind: f"p {check.p:.2g}" for check in model.checks}
+        rows.append((model.response, *(found.get(kind, "") for kind in kinds)))
+    header = ("Response", *(kind.capitalize() for kind in kinds))
+    return [
+        Table("Checks of the residuals (below 0.01 deserves a look)", header, tuple(rows)),
+    ]
 
 
 def _share(value: float | None) -> str:
