@@ -22,6 +22,7 @@ from wideberth.fit.columns import (
     model_matrix,
     model_terms,
     product_factors,
+    stated_terms,
 )
 from wideberth.fit.exact import exact_model
 from wideberth.fit.findings import findings_of, worst_grade
@@ -74,22 +75,34 @@ def rows_fitted(study: Study, response: Response) -> IntArray:
 
 
 def _unsupported_order(study: Study, response: Response) -> Fault | None:
-    if response.order is None:
+    if response.order is None and response.terms is None:
         return None
     rows = rows_fitted(study, response)
-    terms = model_terms(study, response.order, study.runs.block[rows])
+    terms = _asked_terms(study, response, rows)
     matrix = model_matrix(study, terms, rows)
     kept = independent_columns(matrix)
     lost = [i for i in range(len(terms)) if i not in kept]
     if not lost:
         return None
     sets = [_alias_names(matrix, terms, kept, column) for column in lost]
+    listed = response.terms is not None
+    asked = "the listed model" if listed else f"a model of order {response.order}"
     return Fault(
-        f"{response.name}: a model of order {response.order} has terms that {len(rows)} runs"
+        f"{response.name}: {asked} has terms that {len(rows)} runs"
         f" cannot tell apart: {'; '.join(sets)}",
-        f"study.toml, responses.{response.name}.model.order",
-        "leave the order out to fit what can be told apart, lower it, or add runs",
+        f"study.toml, responses.{response.name}.model.{'terms' if listed else 'order'}",
+        "list fewer terms, or add runs"
+        if listed
+        else "leave the order out to fit what can be told apart, lower it, or add runs",
     )
+
+
+def _asked_terms(study: Study, response: Response, rows: IntArray) -> tuple[Term, ...]:
+    """Give the terms of a model whose order or terms are stated."""
+    blocks = study.runs.block[rows]
+    if response.terms is not None:
+        return stated_terms(study, response.terms, blocks)
+    return model_terms(study, response.order or 2, blocks)
 
 
 def _unknown_between(study: Study, response: Response) -> Fault | None:
@@ -176,11 +189,22 @@ def _terms(
 ) -> tuple[tuple[Term, ...], tuple[Finding, ...]]:
     """Choose a model's terms, in printed order, with what is to be said about the choice."""
     found: tuple[Finding, ...] = ()
-    if response.order is None:
+    if response.order is None and response.terms is None:
         terms, found = _supported_terms(study, response, rows)
     else:
-        terms = model_terms(study, response.order, study.runs.block[rows])
+        terms = _asked_terms(study, response, rows)
+    if response.terms is not None:
+        found = (_listed(response),)
     return tuple(terms[i] for i in in_printed_order(terms)), found
+
+
+def _listed(response: Response) -> Finding:
+    shown = ", ".join("*".join(names) for names in response.terms or () if names)
+    text = (
+        f"{response.name}: only the listed terms are fitted ({shown or 'the constant alone'}); if"
+        " they were picked by looking at these runs, intervals and guards are too sure."
+    )
+    return Finding("look", text, response.name)
 
 
 def _fitted_model(study: Study, response: Response) -> Model:

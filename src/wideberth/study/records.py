@@ -125,6 +125,8 @@ class Response:
     limit: Limit | None = None
     order: Literal[1, 2] | None = None
     """Stated order of the model; ``None``: 2, or what the runs support."""
+    terms: tuple[tuple[str, ...], ...] | None = None
+    """Stated terms, each as the sorted names it multiplies; ``None``: all of the order."""
     formula: Formula | None = None
     known_sd: KnownSd | None = None
     block_sd: float | None = None

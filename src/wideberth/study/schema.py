@@ -83,7 +83,7 @@ class ModelTable(_Table):
     """``model`` of a response."""
 
     order: Literal[1, 2] | None = None
-    terms: Literal["all"] = "all"
+    terms: Text | Annotated[list[Text], Field(min_length=1)] = "all"
     transform: Literal["none"] = "none"
 
 

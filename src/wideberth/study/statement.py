@@ -24,6 +24,7 @@ from wideberth.study.schema import (
     FactorTable,
     GoalTable,
     LimitTable,
+    ModelTable,
     ResponseTable,
     StudyFile,
     place,
@@ -127,6 +128,8 @@ class Statement:
             yield from self._limit_faults(name, table.limit, exact=table.formula is not None)
         if table.goal is not None:
             yield from self._goal_faults(name, table.goal)
+        if table.model is not None and table.formula is None:
+            yield from self._model_faults(name, table.model)
         if table.formula is None:
             return
         where = self.at("responses", name, "formula")
@@ -139,6 +142,52 @@ class Statement:
                 )
         for term in table.formula:
             yield from self._term_faults(name, term)
+
+    def _model_faults(self, name: str, table: ModelTable) -> Iterator[Fault]:
+        where = self.at("responses", name, "model", "terms")
+        if isinstance(table.terms, str):
+            if table.terms != "all":
+                yield Fault(
+                    f"terms is '{table.terms}'",
+                    where,
+                    "use 'all' or a list like ['a', 'b', 'a*b']; terms are not chosen from the data"
+                    " here, because guards would then promise more than they hold",
+                )
+            return
+        if table.order is not None:
+            yield Fault(
+                f"the model of {name} has an order and a list of terms", where, "state one of them"
+            )
+        stated = [tuple(sorted(_term_factors(term))) for term in table.terms]
+        for term, names in zip(table.terms, stated, strict=True):
+            yield from self._listed_faults(term, names, stated, where)
+
+    def _listed_faults(
+        self, term: str, names: tuple[str, ...], stated: list[tuple[str, ...]], where: str
+    ) -> Iterator[Fault]:
+        """Check one listed term: known factors, degree 2 at most, and its parts listed as well."""
+        factors = self.tables.factors
+        unknown = [factor for factor in names if factor not in factors]
+        for factor in unknown:
+            mend = nearest(factor, factors, "use the names of factors")
+            yield Fault(f"the term {term} names no factor of the study: {factor}", where, mend)
+        if unknown:
+            return
+        levelled = [factor for factor in names if factors[factor].levels is not None]
+        if len(names) > 2 or len(levelled) > 1:
+            yield Fault(
+                f"the term {term} is beyond a second-order model",
+                where,
+                "use squares and products of two factors, at most one of them with levels",
+            )
+            return
+        missing = [factor for factor in set(names) if (factor,) not in stated]
+        if len(names) == 2 and missing:
+            yield Fault(
+                f"{term} is listed without {' and '.join(sorted(missing))}",
+                where,
+                "list what a term is made of too: without it the model depends on the coding",
+            )
 
     def _term_faults(self, name: str, term: str) -> Iterator[Fault]:
         where = self.at("responses", name, "formula", term)
@@ -353,12 +402,19 @@ def _response(name: str, table: ResponseTable) -> Response:
         goal=None if table.goal is None else _goal(table.goal),
         limit=None if table.limit is None else _limit(table.limit, exact=table.formula is not None),
         order=table.model.order if table.model else None,
+        terms=_stated_terms(table.model),
         formula=None if table.formula is None else _formula(table.formula),
         known_sd=None
         if table.known_sd is None
         else KnownSd(table.known_sd.value, table.known_sd.df),
         block_sd=table.block_sd,
     )
+
+
+def _stated_terms(table: ModelTable | None) -> tuple[tuple[str, ...], ...] | None:
+    if table is None or isinstance(table.terms, str):
+        return None
+    return tuple(dict.fromkeys(tuple(sorted(_term_factors(term))) for term in table.terms))
 
 
 def _goal(table: GoalTable) -> Goal:
