@@ -204,11 +204,12 @@ def _study(study: Study) -> Json:
         if field.name not in ("directory", "sha256", "notes", "every_run")
     }
     for stated, response in zip(content["responses"], study.responses, strict=True):
-        if response.formula is not None:
-            stated["formula"] = {
-                "*".join(names) or "constant": number
-                for names, number in response.formula.terms.items()
-            }
+        for key in ("formula", "derived"):
+            formula = getattr(response, key)
+            if formula is not None:
+                stated[key] = {
+                    "*".join(names) or "constant": number for names, number in formula.terms.items()
+                }
     return content
 
 
@@ -218,7 +219,7 @@ def _plain(value: Any) -> Any:
         return {
             field.name: _plain(getattr(value, field.name))
             for field in fields(value)
-            if field.name != "formula"
+            if field.name not in ("formula", "derived")
         }
     if isinstance(value, Mapping):
         return {str(key): _plain(item) for key, item in value.items()}

@@ -67,6 +67,8 @@ def _reason(study: Study, response: Response, row: int) -> str:
 
 def circumstances(study: Study, response: Response, model: Model) -> Iterator[Finding]:
     """Say what was done to the data of one model."""
+    if response.derived is not None:
+        yield Finding("fine", _derived(study, response), model.response)
     for run in model.left_out:
         yield Finding("fine", _left_out_words(run, model), model.response)
     if study.runs.weight is not None and model.runs:
@@ -78,6 +80,17 @@ def circumstances(study: Study, response: Response, model: Model) -> Iterator[Fi
     assays = study.assays.get(response.name)
     if assays is not None and assays.counts[-1] > 1:
         yield _assays(model, assays, limited=response.limit is not None)
+
+
+def _derived(study: Study, response: Response) -> str:
+    named = {
+        name for names in (response.derived.terms if response.derived else ()) for name in names
+    }
+    parts = [r.name for r in study.measured if r.name in named]
+    return (
+        f"{response.name}: computed from {' and '.join(parts)} run by run, then fitted like a"
+        " measured response, so that their doubt carries through."
+    )
 
 
 def _left_out_words(run: LeftOutRun, model: Model) -> str:

@@ -117,7 +117,7 @@ class KnownSd:
 
 @dataclass(frozen=True, slots=True)
 class Response:
-    """One response: measured, or known exactly by its ``formula``."""
+    """One response: measured, derived from measured ones, or known exactly by its ``formula``."""
 
     name: str
     unit: str
@@ -128,6 +128,8 @@ class Response:
     terms: tuple[tuple[str, ...], ...] | None = None
     """Stated terms, each as the sorted names it multiplies; ``None``: all of the order."""
     formula: Formula | None = None
+    derived: Formula | None = None
+    """Computed run by run from measured responses (first degree) and factors, then fitted."""
     known_sd: KnownSd | None = None
     block_sd: float | None = None
     """Standard deviation between blocks that are a sample; ``None``: estimated from the runs."""
@@ -298,5 +300,5 @@ class Study:
 
     @property
     def measured(self) -> tuple[Response, ...]:
-        """The responses that were measured, in the study's order."""
+        """The responses that have a value a run, measured or derived, in the study's order."""
         return tuple(r for r in self.responses if r.formula is None)

@@ -21,6 +21,7 @@ from wideberth.study.records import (
     Factor,
     Finding,
     FloatArray,
+    Formula,
     IntArray,
     LeftOut,
     NumericFactor,
@@ -136,7 +137,10 @@ def _interpret(
     n = len(table.rows)
     actual = np.array([reader.factor(f, faults) for f in numeric]).reshape(len(numeric), n).T
     levels = np.array([reader.levels(f, faults) for f in categorical], dtype=np.int64)
-    values = np.array([reader.response(r, faults) for r in measured]).reshape(len(measured), n).T
+    read = {r.name: np.array(reader.response(r, faults)) for r in measured if r.derived is None}
+    read |= {factor.name: actual[:, j] for j, factor in enumerate(numeric)}
+    read |= {r.name: _derived(r.derived, read, n) for r in measured if r.derived is not None}
+    values = np.array([read[r.name] for r in measured]).reshape(len(measured), n).T
     blocks, block = reader.blocks(faults)
     runs = Runs(
         file=table.file,
@@ -168,6 +172,18 @@ def _interpret(
     )
 
 
+def _derived(formula: Formula, read: Mapping[str, FloatArray], n_rows: int) -> FloatArray:
+    """Compute a derived response from the columns that it names; empty where one of them is."""
+    value = np.zeros(n_rows)
+    for names, number in formula.terms.items():
+        term = np.full(n_rows, number)
+        for name in names:
+            # a name without a column is a fault of the statement, and said there
+            term = term * read.get(name, np.full(n_rows, np.nan))
+        value = value + term
+    return value
+
+
 def _columns(
     table: _Table, factors: tuple[Factor, ...], responses: tuple[Response, ...]
 ) -> tuple[dict[str, int], list[Fault]]:
@@ -191,7 +207,8 @@ def _columns(
                     "write the same unit in both, and convert the numbers if they differ",
                 )
             )
-    needed = [f.name for f in factors] + [r.name for r in responses if r.formula is None]
+    needed = [f.name for f in factors]
+    needed += [r.name for r in responses if r.formula is None and r.derived is None]
     unknown = [name for name in columns if name and name not in units]
     for name in needed:
         if name not in columns:

@@ -9,17 +9,7 @@ from decimal import Decimal
 from wideberth.errors import Fault
 from wideberth.study.lines import KeyPath
 from wideberth.study.naming import name_faults, nearest
-from wideberth.study.records import (
-    CategoricalFactor,
-    Factor,
-    Formula,
-    Goal,
-    KnownSd,
-    LeftOut,
-    Limit,
-    NumericFactor,
-    Response,
-)
+from wideberth.study.records import Factor, LeftOut, Response
 from wideberth.study.schema import (
     FactorTable,
     GoalTable,
@@ -30,6 +20,12 @@ from wideberth.study.schema import (
     place,
 )
 from wideberth.study.sheet import SheetContent
+from wideberth.study.stated_records import (
+    factor_record,
+    numbers_of,
+    response_record,
+    term_factors,
+)
 
 STUDY_FILE = "study.toml"
 
@@ -124,11 +120,12 @@ class Statement:
             )
 
     def _response_faults(self, name: str, table: ResponseTable) -> Iterator[Fault]:
+        exact = table.formula is not None and not self._parts(table)
         if table.limit is not None:
-            yield from self._limit_faults(name, table.limit, exact=table.formula is not None)
+            yield from self._limit_faults(name, table.limit, exact=exact)
         if table.goal is not None:
             yield from self._goal_faults(name, table.goal)
-        if table.model is not None and table.formula is None:
+        if table.model is not None and not exact:
             yield from self._model_faults(name, table.model)
         if table.formula is None:
             return
@@ -136,7 +133,7 @@ class Statement:
         if not table.formula:
             yield Fault("the formula is empty", where, "state at least one term")
         for key in ("model", "known_sd", "block_sd"):
-            if getattr(table, key) is not None:
+            if exact and getattr(table, key) is not None:
                 yield Fault(
                     f"{name} has a formula and a {key}", where, "an exact response is not fitted"
                 )
@@ -158,7 +155,7 @@ class Statement:
             yield Fault(
                 f"the model of {name} has an order and a list of terms", where, "state one of them"
             )
-        stated = [tuple(sorted(_term_factors(term))) for term in table.terms]
+        stated = [tuple(sorted(term_factors(term))) for term in table.terms]
         for term, names in zip(table.terms, stated, strict=True):
             yield from self._listed_faults(term, names, stated, where)
 
@@ -191,20 +188,53 @@ class Statement:
 
     def _term_faults(self, name: str, term: str) -> Iterator[Fault]:
         where = self.at("responses", name, "formula", term)
-        names = _term_factors(term)
+        names = term_factors(term)
         if len(names) > 2:
             yield Fault(f"the term {term} is of degree {len(names)}", where, "use degree 2 at most")
+        if names == ["per"]:
+            yield Fault("a denominator is not served", where, "measure the ratio as a response")
+            return
+        if set(names) & set(self.tables.responses):
+            yield from self._derived_faults(term, names, where)
+            return
         for factor in names:
             table = self.tables.factors.get(factor)
             if table is None:
+                known = [*self._numeric_names(), *self._measured_names()]
                 yield Fault(
                     f"the term {term} names no factor of the study: {factor}",
                     where,
-                    nearest(factor, self._numeric_names(), "use the names of numeric factors"),
+                    nearest(factor, known, "use the names of numeric factors"),
                 )
             elif table.levels is not None or table.scale == "log":
                 kind = "has levels" if table.levels is not None else "is on a log scale"
                 yield Fault(f"{factor} {kind} and cannot stand in a formula", where, "leave it out")
+
+    def _derived_faults(self, term: str, names: list[str], where: str) -> Iterator[Fault]:
+        """Check a term of a formula that names a response: a measured one, by itself."""
+        for name in names:
+            table = self.tables.responses.get(name)
+            if table is not None and table.formula is not None:
+                yield Fault(
+                    f"the term {term} names {name}, which has a formula itself",
+                    where,
+                    "write out what it is made of",
+                )
+                return
+        if len(names) > 1:
+            yield Fault(
+                f"the term {term} multiplies a measured response",
+                where,
+                "measured responses may only be added, each with a number",
+            )
+
+    def _measured_names(self) -> list[str]:
+        return [name for name, table in self.tables.responses.items() if table.formula is None]
+
+    def _parts(self, table: ResponseTable) -> list[str]:
+        """Name the measured responses that a formula is computed from."""
+        named = {name for term in table.formula or () for name in term_factors(term)}
+        return [name for name in self._measured_names() if name in named]
 
     def _numeric_names(self) -> list[str]:
         return [name for name, table in self.tables.factors.items() if table.levels is None]
@@ -228,7 +258,7 @@ class Statement:
 
     def _goal_faults(self, name: str, table: GoalTable) -> Iterator[Fault]:
         where = self.at("responses", name, "goal")
-        poor, ideal = _numbers(table.poor), _numbers(table.ideal)
+        poor, ideal = numbers_of(table.poor), numbers_of(table.ideal)
         if table.want == "near":
             yield from self._near_faults(name, poor, ideal)
             return
@@ -302,7 +332,7 @@ class Statement:
                     )
 
     def _leave_out_faults(self) -> Iterator[Fault]:
-        measured = [name for name, table in self.tables.responses.items() if table.formula is None]
+        measured = self._measured_names()
         for i, table in enumerate(self.tables.leave_out):
             for name in table.responses or ():
                 if name not in measured:
@@ -365,96 +395,22 @@ class Statement:
 
     def factors(self) -> tuple[Factor, ...]:
         """Give the factors as records, in the order stated."""
-        return tuple(_factor(name, table) for name, table in self.tables.factors.items())
+        return tuple(factor_record(name, table) for name, table in self.tables.factors.items())
 
     def left_out(self) -> tuple[LeftOut, ...]:
         """Give what is left out of the fit, as records."""
-        return tuple(
-            LeftOut(tuple(table.rows), table.reason, tuple(table.responses or ()))
-            for table in self.tables.leave_out
-        )
+        derived = {name: self._parts(table) for name, table in self.tables.responses.items()}
+        found = []
+        for table in self.tables.leave_out:
+            named = list(table.responses or ())
+            # what is derived from a left-out value is left out with it
+            named += [name for name, parts in derived.items() if set(parts) & set(named)]
+            found.append(LeftOut(tuple(table.rows), table.reason, tuple(named)))
+        return tuple(found)
 
     def responses(self) -> tuple[Response, ...]:
         """Give the responses as records, in the order stated."""
-        return tuple(_response(name, table) for name, table in self.tables.responses.items())
-
-
-def _factor(name: str, table: FactorTable) -> Factor:
-    if table.levels is not None:
-        return CategoricalFactor(name, table.unit or "", tuple(table.levels))
-    step = table.settable_step
-    return NumericFactor(
-        name=name,
-        unit=table.unit or "",
-        low=0.0 if table.low is None else table.low,
-        high=1.0 if table.high is None else table.high,
-        allowed=None if table.allowed is None else (table.allowed[0], table.allowed[1]),
-        tolerance=table.tolerance,
-        settable_step=None if step is None else Decimal(repr(step)),
-        scale=table.scale,
-    )
-
-
-def _response(name: str, table: ResponseTable) -> Response:
-    return Response(
-        name=name,
-        unit=table.unit,
-        goal=None if table.goal is None else _goal(table.goal),
-        limit=None if table.limit is None else _limit(table.limit, exact=table.formula is not None),
-        order=table.model.order if table.model else None,
-        terms=_stated_terms(table.model),
-        formula=None if table.formula is None else _formula(table.formula),
-        known_sd=None
-        if table.known_sd is None
-        else KnownSd(table.known_sd.value, table.known_sd.df),
-        block_sd=table.block_sd,
-    )
-
-
-def _stated_terms(table: ModelTable | None) -> tuple[tuple[str, ...], ...] | None:
-    if table is None or isinstance(table.terms, str):
-        return None
-    return tuple(dict.fromkeys(tuple(sorted(_term_factors(term))) for term in table.terms))
-
-
-def _goal(table: GoalTable) -> Goal:
-    ideal = _numbers(table.ideal)
-    if table.want == "near" and ideal is not None and len(ideal) == 1:
-        ideal = (ideal[0], ideal[0])
-    exponent = _numbers(table.exponent) or (1.0,)
-    return Goal(
-        want=table.want,
-        poor=_numbers(table.poor),
-        ideal=ideal,
-        exponent=(exponent[0], exponent[-1]),
-        priority=table.priority,
-    )
-
-
-def _limit(table: LimitTable, *, exact: bool) -> Limit:
-    guard = table.guard or ("none" if exact else "batch")
-    return Limit(table.low, table.high, guard, table.confidence, table.share, table.point)
-
-
-def _formula(table: Mapping[str, float]) -> Formula:
-    terms: dict[tuple[str, ...], float] = {}
-    for term, number in table.items():
-        names = tuple(sorted(_term_factors(term)))
-        terms[names] = terms.get(names, 0.0) + number
-    return Formula(terms)
-
-
-def _term_factors(term: str) -> list[str]:
-    """Split ``constant``, ``a``, ``a^2``, ``a*b`` into the factors it multiplies."""
-    names: list[str] = []
-    for part in (piece.strip() for piece in term.split("*")):
-        base, caret, power = part.partition("^")
-        count = int(power) if caret and power.strip().isdigit() and int(power) < 9 else 1
-        names += [base.strip() if caret and count > 1 else part] * count
-    return [] if names == ["constant"] else names
-
-
-def _numbers(value: float | list[float] | None) -> tuple[float, ...] | None:
-    if value is None:
-        return None
-    return tuple(value) if isinstance(value, list) else (value,)
+        return tuple(
+            response_record(name, table, derived=bool(self._parts(table)))
+            for name, table in self.tables.responses.items()
+        )
