@@ -10,6 +10,7 @@ from wideberth.fit.records import Model, level_names, surface
 from wideberth.quadratic.terms import features
 from wideberth.study.coding import to_coded
 from wideberth.study.records import Finding, FloatArray, Setting
+from wideberth.study.resets import seldom_reset
 from wideberth.surface.explored import contains
 
 _NEAR = 0.5
@@ -47,6 +48,7 @@ def choice_findings(
         if finding.grade != "fine"
     ]
     found += [Finding("look", one.words()) for one in problem.study.left_out]
+    found += seldom_reset(problem.study)
     found += _failed_near(problem, levels, x)
     found += _where(problem, x, asked=asked)
     found += _how_far_known(problem, levels, x)
