@@ -121,13 +121,13 @@ def _pattern_checks(fit: LeastSquares, order: IntArray | None, name: str) -> Ite
         spread = float(along @ _unit(own[:, None] ** 2)[:, 0])
         p = _share_beyond(abs(spread), np.abs(along @ reference.squares))
         way = "grows" if spread > 0 else "shrinks"
-        shown = f"{way} with the response" if p < SURE else "does not depend on the response"
+        shown = f"{way} with the response" if p < SURE else "is not shown to depend on the response"
         yield _check("spread against fitted", spread, p, f"{name}: the scatter {shown}")
     if order is not None and len(np.unique(order)) == len(order):
         places = np.argsort(order[used], kind="stable")
         ratio = float(_roughness(own[places, None])[0])
         p = _share_beyond(-ratio, -_roughness(reference.scaled[places]))
-        shown = "resemble each other" if p < SURE else "do not resemble each other"
+        shown = "resemble each other" if p < SURE else "are not shown to resemble each other"
         text = f"{name}: runs made one after the other {shown} beyond what the model explains"
         yield _check("neighbouring runs", ratio, p, text)
 
@@ -181,7 +181,7 @@ def _order_check(fit: LeastSquares, order: IntArray | None, name: str) -> Iterat
     found = added_columns(fit, centred)
     if found is not None:
         f, first, second, p = found
-        shown = "drift" if p < SURE else "do not drift"
+        shown = "drift" if p < SURE else "are not shown to drift"
         text = f"{name}: the results {shown} over the run order"
         yield _check("drift over run order", f, p, text, (first, second))
 
@@ -203,7 +203,7 @@ def _curvature_by_level(
         found = added_columns(fit, model_matrix(study, added, rows))
         if found is not None:
             value, first, second, p = found
-            shown = "differs" if p < SURE else "does not differ"
+            shown = "differs" if p < SURE else "is not shown to differ"
             text = f"{name}: curvature {shown} between the levels of {factor.name}"
             text += ", though the model takes it as the same" if p < SURE else ""
             yield _check(f"curvature by {factor.name}", value, p, text, (first, second))
@@ -219,7 +219,7 @@ def _other_columns(study: Study, rows: IntArray, fit: LeastSquares, name: str) -
     for column, (f, first, second, p) in tested:
         # many columns are many chances to be fooled
         joint = min(1.0, p * len(tested))
-        shown = "go with" if joint < SURE else "do not go with"
+        shown = "go with" if joint < SURE else "are not shown to go with"
         text = f"{name}: the residuals {shown} the column {column}"
         yield _check(f"column {column}", f, joint, text, (first, second))
 
