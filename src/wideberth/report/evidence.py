@@ -309,10 +309,12 @@ def _checks(record: Record) -> list[Block]:
     for model in models:
         found = {check.kind: f"p {check.p:.2g}" for check in model.checks}
         rows.append((model.response, *(found.get(kind, "") for kind in kinds)))
-    header = ("Response", *(kind.capitalize() for kind in kinds))
-    return [
-        Table("Checks of the residuals (below 0.01 deserves a look)", header, tuple(rows)),
-    ]
+    rows.insert(0, ("Response", *(kind.capitalize() for kind in kinds)))
+    if len(kinds) > max(len(models), 4):
+        # the sheet's own columns can be many; then each check has a line
+        rows = list(zip(*rows, strict=True))
+    title = "Checks of the residuals (below 0.01 deserves a look)"
+    return [Table(title, rows[0], tuple(rows[1:]))]
 
 
 def _share(value: float | None) -> str:
