@@ -15,6 +15,7 @@ from types import ModuleType
 from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
+    from wideberth.chain.plan_files import write_plan
     from wideberth.chain.record import build_record
     from wideberth.decide.frontier import frontier
     from wideberth.decide.recommend import recommend
@@ -22,9 +23,11 @@ if TYPE_CHECKING:
     from wideberth.fit.models import fit
     from wideberth.operate.robustness import robustness
     from wideberth.operate.window import window
+    from wideberth.plan.plan import plan_runs
+    from wideberth.plan.stage import finished_stage
     from wideberth.report.memo import memo_html, write_memo
     from wideberth.study.checking import check_study
-    from wideberth.study.reading import read_study
+    from wideberth.study.reading import read_draft, read_study
     from wideberth.study.template import start_study
     from wideberth.surface.ridge import shape
     from wideberth.uncertainty.assess import uncertainty
@@ -38,9 +41,12 @@ __all__ = [
     "WideberthError",
     "build_record",
     "check_study",
+    "finished_stage",
     "fit",
     "frontier",
     "memo_html",
+    "plan_runs",
+    "read_draft",
     "read_study",
     "recommend",
     "robustness",
@@ -49,6 +55,7 @@ __all__ = [
     "uncertainty",
     "window",
     "write_memo",
+    "write_plan",
 ]
 
 _HOMES = {
@@ -58,9 +65,12 @@ _HOMES = {
     "WideberthError": "errors",
     "build_record": "chain.record",
     "check_study": "study.checking",
+    "finished_stage": "plan.stage",
     "fit": "fit.models",
     "frontier": "decide.frontier",
     "memo_html": "report.memo",
+    "plan_runs": "plan.plan",
+    "read_draft": "study.reading",
     "read_study": "study.reading",
     "recommend": "decide.recommend",
     "robustness": "operate.robustness",
@@ -69,6 +79,7 @@ _HOMES = {
     "uncertainty": "uncertainty.assess",
     "window": "operate.window",
     "write_memo": "report.memo",
+    "write_plan": "chain.plan_files",
 }
 
 

@@ -8,6 +8,7 @@ from support.brute import second_order
 from support.build import central_composite, make_study, more
 from wideberth.decide.conformance import conformance, conformance_over, setting_sd
 from wideberth.decide.guards import Guard
+from wideberth.decide.losses import losses
 from wideberth.decide.problem import build_problem
 from wideberth.fit.draws import draw_coefficients
 from wideberth.fit.models import fit
@@ -107,3 +108,35 @@ def test_no_limit_no_statement():
     problem, draws = _problem({})
     assert conformance(problem, draws, (), X, np.zeros(2), seed=1) is None
     assert conformance_over(problem, draws, (), X[None], np.zeros(2), seed=1) is None
+
+
+def test_losses_by_limit_and_by_source_against_plain_simulation():
+    rng = np.random.default_rng(3)
+    x = central_composite(2, n_centre=5)
+    y = 20 + 2 * x[:, 0] - (x**2).sum(axis=1) + 0.6 * rng.standard_normal(len(x))
+    z = 10 + x[:, 1] + 0.6 * rng.standard_normal(len(x))
+    limits = {"y": Limit(19.0, None, "none"), "z": Limit(None, 11.0, "none")}
+    models = fit(make_study(x, {"y": y, "z": z}, limits=limits, tolerance=0.4))
+    problem = build_problem(models, seed=1, room=False)
+    draws = draw_coefficients(models, 500, 1)
+    place, sd = np.array([0.2, 0.3]), np.array([0.2, 0.2])
+    found = losses(problem, draws, (), place, sd, 1)
+    settings = place + sd * rng.standard_normal((500, 2))
+    shares = {}
+    for name, bound, sign in (("y", 19.0, -1), ("z", 11.0, 1)):
+        model = models[name]
+        own = settings[rng.permutation(500)]
+        f = np.column_stack([np.ones(500), own, own**2, own[:, 0] * own[:, 1]])
+        f = f[:, [term.monomial for term in model.terms]]
+        mean = (f * draws.of(model)).sum(axis=1)
+        noisy = mean[:, None] + draws.sd(model)[:, None] * rng.standard_normal((500, 60))
+        shares[name] = (sign * (noisy - bound) > 0).mean()
+    by_name = {words.split()[0]: share for words, share in found.limits.items()}
+    assert by_name == pytest.approx(shares, abs=0.03)
+    whole = conformance(problem, draws, (), place, sd, 1).mean
+    held = conformance(problem, draws, (), place, np.zeros(2), 1).mean
+    assert found.sources["settings"] == pytest.approx(held - whole)
+    assert found.sources["batches"] > found.sources["settings"] > 0
+    assert set(found.sources) == {"equations", "batches", "settings"}
+    still = losses(problem, draws, (), place, np.zeros(2), 1)
+    assert "settings" not in still.sources

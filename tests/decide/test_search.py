@@ -10,27 +10,43 @@ from support.problems import random_models
 from wideberth.decide.judge import limit_verdicts, overall_desirability, read_setting
 from wideberth.decide.problem import arena, build_problem
 from wideberth.decide.recommend import recommend
+from wideberth.decide.search import find_best
 from wideberth.fit.models import fit
 from wideberth.study.reading import read_study
 from wideberth.study.records import Limit
 
+SEEDS = range(200)
 
-@pytest.mark.parametrize("seed", range(56))
-def test_never_beaten_by_brute_force(seed):
+
+@pytest.mark.parametrize("seed", SEEDS)
+def test_never_beaten_by_brute_force_and_the_gap_is_closed(seed):
     models = random_models(seed)
     choice = recommend(models)
-    assert choice.status in ("met", "provisional", "unproven", "conflict", "unreached")
     if choice.status != "met":
+        # too little is fitted there to compare, or nothing holds
+        assert choice.status in ("provisional", "unproven", "conflict", "unreached", "unsupported")
         return
     x = np.array(list(choice.setpoint.values()))
     assert slack(models, choice, x) >= -1e-6
-    best, _ = brute_best(models, choice)
+    best, _ = brute_best(models, choice, n=4000, starts=16, moves=20, rounds=90)
     assert best <= choice.desirability + 1e-6
+    assert best <= choice.desirability + choice.proof_gap + 1e-12
+    assert choice.proof_gap <= 1e-3 + 1e-9
 
 
 def test_most_random_problems_have_an_answer_to_compare():
-    met = sum(recommend(random_models(seed)).status == "met" for seed in range(0, 56, 3))
+    met = sum(recommend(random_models(seed)).status == "met" for seed in range(0, 57, 3))
     assert met >= 13
+
+
+def test_a_pocket_that_the_search_overlooks_is_found_by_the_proof():
+    # the pocket with the best setting is about a ten-thousandth of the region
+    models = random_models(182)
+    problem = build_problem(models, seed=1, room=False)
+    overlooked = find_best(arena(problem, (), "simultaneous"))
+    choice = recommend(models, room=False)
+    assert choice.desirability > np.exp(overlooked.score) + 0.05
+    assert choice.proof_gap <= 1e-3 + 1e-9
 
 
 def test_a_worse_setting_would_be_noticed():

@@ -78,6 +78,8 @@ def _ladder():
         limits = {"z": Limit(None, float(bound), "share", 0.95, 0.95)}
         choice = _choice(limits, {"y": more(10.0, 25.0)})
         seen.setdefault(choice.status, choice)
+        if choice.status == "conflict":
+            break
     return seen
 
 

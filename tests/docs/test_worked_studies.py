@@ -30,6 +30,25 @@ def test_the_sheet_comes_from_the_script_and_says_it_is_invented(name):
     assert "invented" in (STUDIES / name / "README.md").read_text(encoding="utf-8")
 
 
+def test_the_staged_study_is_what_its_plans_wrote_filled_in():
+    first, both = _script("emulsion").sheets()
+    folder = STUDIES / "emulsion"
+    assert (folder / "runs.csv").read_text(encoding="utf-8") == first
+    assert (folder / "both-stages.csv").read_text(encoding="utf-8") == both
+    assert both.startswith(first)
+    assert "invented" in (folder / "README.md").read_text(encoding="utf-8")
+
+
+def test_the_seal_of_the_staged_study_truly_stays_cool_in_every_run_made(tmp_path):
+    shutil.copytree(STUDIES / "emulsion", tmp_path / "emulsion")
+    shutil.copy(tmp_path / "emulsion" / "both-stages.csv", tmp_path / "emulsion" / "runs.csv")
+    study, script = read_study(tmp_path / "emulsion"), _script("emulsion")
+    for setting in study.runs.numeric_actual:
+        mean = script.truth((setting - script.MIDDLE) / script.HALF)["seal"] + 0.5
+        assert mean + 2.33 * script.NOISE["seal"] < 82
+    assert recommend(fit(study)).status == "met"
+
+
 def test_plating_is_met_and_a_tighter_limit_conflicts(tmp_path):
     choice = recommend(fit(read_study(STUDIES / "plating")))
     assert choice.status == "met"

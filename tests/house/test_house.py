@@ -34,6 +34,7 @@ FLOORS = {
 COMMANDS = (
     "start",
     "check",
+    "plan",
     "fit",
     "shape",
     "recommend",
@@ -41,9 +42,21 @@ COMMANDS = (
     "uncertainty",
     "window",
     "robustness",
+    "next",
     "memo",
 )
-HEAVY = ("numpy", "scipy", "pandas", "statsmodels", "cvxpy", "matplotlib", "pydantic", "jinja2")
+HEAVY = (
+    "numpy",
+    "scipy",
+    "pandas",
+    "statsmodels",
+    "cvxpy",
+    "matplotlib",
+    "pydantic",
+    "jinja2",
+    "openpyxl",
+    "xlsxwriter",
+)
 PRESENTING = ("matplotlib", "click", "jinja2")
 
 

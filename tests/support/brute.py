@@ -60,6 +60,8 @@ def slack(models, choice, x, tolerance=0.0):
     runs = study.runs.numeric_actual
     box, ball = np.abs(runs).max(), (runs**2).sum(axis=1).max()
     factors = {verdict.response: verdict.factor for verdict in choice.limits}
+    limited = [response.limit for response in study.responses if response.limit is not None]
+    shares = sum(limit.guard == "share" for limit in limited)
     shifts = np.array(list(product((-1.0, 0.0, 1.0), repeat=k))) if tolerance else np.zeros((1, k))
     worst = np.full(x.shape[:-1], np.inf)
     for shift in shifts * tolerance:
@@ -71,12 +73,12 @@ def slack(models, choice, x, tolerance=0.0):
             if response.limit is not None:
                 beta, covariance = _ordered(model, k)
                 h = np.einsum("...p,pq,...q->...", f, covariance, f)
-                reach = factors[response.name] * model.s * _factor(response.limit, model, h)
+                reach = factors[response.name] * model.s * _factor(response.limit, model, h, shares)
                 worst = np.minimum(worst, response.limit.high - f @ beta - reach)
     return worst
 
 
-def _factor(limit, model, h):
+def _factor(limit, model, h, shares):
     df, confidence = model.df_residual, limit.confidence
     if limit.guard == "mean":
         return stats.t.ppf(confidence, df) * np.sqrt(h)
@@ -85,6 +87,8 @@ def _factor(limit, model, h):
     if limit.guard == "share":
         grid = np.linspace(h.min(), h.max() + 1e-9, 400)
         z = stats.norm.ppf(limit.share)
+        # several share limits split the risk equally; each has one side here
+        confidence = 1 - (1 - confidence) / shares
         exact = np.sqrt(grid) * stats.nct.ppf(confidence, df, z / np.sqrt(grid))
         return np.interp(h, grid, exact)
     return 0.0 * h

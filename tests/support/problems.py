@@ -13,13 +13,13 @@ GUARDS = ("none", "mean", "batch", "share")
 
 
 def random_models(seed):
-    """A random study: 1 to 5 factors, 2 to 4 responses, mixed goals, one guarded limit."""
+    """A random study: 1 to 6 factors, 2 to 6 responses, mixed goals, one or two guarded limits."""
     rng = np.random.default_rng(seed)
-    k = 1 + seed % 5
+    k = 1 + seed % 6
     x = central_composite(k, n_centre=4 if k < 5 else 2)
     p = 1 + 2 * k + k * (k - 1) // 2
     values, goals, limits = {}, {}, {}
-    n_responses = int(rng.integers(2, 5))
+    n_responses = int(rng.integers(2, 7))
     for i in range(n_responses):
         beta = rng.standard_normal(p) * np.r_[0.0, np.full(k, 3.0), np.full(p - 1 - k, 1.5)]
         y = 50 + second_order(x) @ beta + 0.6 * rng.standard_normal(len(x))
@@ -37,9 +37,10 @@ def random_models(seed):
         else:
             ends = (low, high) if want == "more" else (high, low)
             goals[name] = Goal(want, (ends[0],), (ends[1],), (exponents[0],) * 2, priority)
-        if i == n_responses - 1:
-            guard = GUARDS[seed % 4]
+        if i == n_responses - 1 or (i == 1 and n_responses > 4):
+            guard = GUARDS[(seed // 6 + i) % 4]
             limits[name] = Limit(None, float(np.quantile(y, 0.75)), guard, 0.95, 0.9)
-            if rng.random() < 0.5:
+            # a goal that pulls against its own limit would be one surface of equal optima
+            if rng.random() < 0.5 or want == "more":
                 del goals[name]
     return fit(make_study(x, values, goals=goals, limits=limits))

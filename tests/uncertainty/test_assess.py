@@ -10,7 +10,7 @@ from wideberth.fit.models import fit
 from wideberth.study.reading import read_study
 from wideberth.study.records import Limit
 from wideberth.uncertainty.assess import assess, draws_for, uncertainty
-from wideberth.uncertainty.location import evenly_spread, in_region, optimum_region
+from wideberth.uncertainty.location import edge_spread, evenly_spread, in_region, optimum_region
 
 
 def _hill(noise=0.5, *, k=2, centre=0.3, seed=0, **kwargs):
@@ -230,3 +230,26 @@ def test_optima_that_all_agree_make_a_tiny_region():
     region = optimum_region(problem, np.tile([0.3, 0.3], (100, 1)), 0.95)
     assert region.share_of_explored < 1e-3
     assert region.centre == pytest.approx([0.3, 0.3])
+
+
+def test_where_optima_crowd_on_the_edge_settings_join_and_the_edge_is_counted_apart():
+    models = fit(read_study("studies/process/ridge"))
+    sure = uncertainty(models, n_draws=400)
+    problem, _ = solve(models)
+    assert sure.edge_share > 0.2
+    assert [region.level for region in sure.narrower] == [0.5, 0.9]
+    shares = [region.share_of_edge for region in (*sure.narrower, sure.region)]
+    assert shares == sorted(shares)
+    assert 0 < shares[-1] < 1
+    settings, _ = edge_spread(problem.region)
+    joined = sure.region.joined
+    kept = joined.shortfall.of(settings, joined.critical) <= joined.critical
+    assert (in_region(problem, sure.region, settings) >= kept).all()
+    inner = in_region(problem, sure.narrower[0], settings)
+    assert (in_region(problem, sure.region, settings) | ~inner).all()
+
+
+def test_an_optimum_inside_has_the_ellipsoid_alone():
+    sure = uncertainty(fit(read_study("studies/process/hydrogenation")), n_draws=400)
+    assert sure.region.joined is None
+    assert sure.region.share_of_edge is None

@@ -12,19 +12,24 @@ import numpy as np
 
 from wideberth import __version__
 from wideberth.chain.record import Record
+from wideberth.decide.alternatives import Alternative
 from wideberth.decide.every_run import EveryRun
 from wideberth.decide.frontier import Frontier
 from wideberth.decide.give_ups import GiveUp
+from wideberth.decide.prospects import Prospects
 from wideberth.decide.records import Choice
 from wideberth.errors import Fault
 from wideberth.fit.equations import own_units
 from wideberth.fit.records import Model, Models
 from wideberth.operate.records import Robustness, Window
+from wideberth.plan.plan import offence_faults
+from wideberth.plan.records import Plan, Stage
 from wideberth.study.records import Finding, Study
 from wideberth.surface.records import Shape
 from wideberth.uncertainty.records import Uncertainty
 
 Json = dict[str, Any]
+_NOT_TOLD = ("formula", "joined")
 
 
 def dumps(content: Json) -> str:
@@ -97,6 +102,17 @@ def give_ups_json(costs: tuple[GiveUp, ...]) -> list[Any]:
     ]
 
 
+def alternatives_json(found: tuple[Alternative, ...]) -> list[Any]:
+    """Give what other aims would name."""
+    return [_plain(one) for one in found]
+
+
+def prospects_json(found: Prospects) -> Json:
+    """Give what more evidence would buy."""
+    content: Json = _plain(found)
+    return content
+
+
 def frontier_json(answer: Frontier, study: Study) -> Json:
     """Give the answer of ``frontier``."""
     return {**_head("frontier", study), **_plain(answer)}
@@ -141,8 +157,35 @@ def record_json(record: Record) -> Json:
         "give_ups": give_ups_json(record.give_ups),
         "priorities": None if record.priorities is None else _plain(record.priorities),
         "frontier": None if record.frontier is None else _plain(record.frontier),
+        "alternatives": alternatives_json(record.alternatives),
+        "prospects": prospects_json(record.prospects),
         "maps": _plain(record.maps),
     }
+
+
+def plan_json(plan: Plan) -> Json:
+    """Give the answer of ``plan``: a refused one with its errors, one for each offending run."""
+    content: Json = {**_head("plan", plan.study), "status": plan.status, "seed": plan.seed}
+    if plan.offending:
+        content["errors"] = [asdict(fault) for fault in offence_faults(plan)]
+    choice = {key: value for key, value in _plain(plan.choice).items() if value is not None}
+    design = plan.design
+    return {
+        **content,
+        "plan": choice,
+        "axial_distance": design.axial_distance,
+        "runs": _plain(plan.runs),
+        "quality": _plain(plan.quality),
+        "rounding": _plain(plan.rounding),
+        "certificate": _plain(plan.certificate),
+        "ways_out": _plain(plan.ways_out),
+        "findings": [asdict(finding) for finding in plan.findings],
+    }
+
+
+def stage_json(stage: Stage, study: Study) -> Json:
+    """Give the answer of ``next`` after a two-level stage."""
+    return {**_head("next", study), "status": stage.decision.do, **_plain(stage)}
 
 
 def _head(command: str, study: Study) -> Json:
@@ -219,7 +262,7 @@ def _plain(value: Any) -> Any:
         return {
             field.name: _plain(getattr(value, field.name))
             for field in fields(value)
-            if field.name not in ("formula", "derived")
+            if field.name not in _NOT_TOLD
         }
     if isinstance(value, Mapping):
         return {str(key): _plain(item) for key, item in value.items()}

@@ -7,11 +7,13 @@ from dataclasses import dataclass
 from importlib.metadata import version as package_version
 
 from wideberth import __version__
+from wideberth.decide.alternatives import Alternative, alternatives
 from wideberth.decide.every_run import EveryRun, with_every_run
 from wideberth.decide.frontier import Frontier, trade_off
 from wideberth.decide.give_ups import GiveUp, give_ups
 from wideberth.decide.maps import factor_maps
 from wideberth.decide.priorities import Priorities, priorities
+from wideberth.decide.prospects import Prospects, prospects
 from wideberth.decide.recommend import solve
 from wideberth.decide.records import Choice, FactorMap
 from wideberth.fit.models import fit
@@ -54,6 +56,10 @@ class Record:
         How far each priority may move before the setpoint leaves its tolerance.
     every_run : EveryRun or None
         The answer with nothing left out, where runs are left out.
+    alternatives : tuple of Alternative
+        What other aims would name.
+    prospects : Prospects
+        What more evidence would buy.
     outward : Outward
         The ridge of the compromise, and runs to try beyond the explored edge.
     """
@@ -74,6 +80,8 @@ class Record:
     give_ups: tuple[GiveUp, ...]
     frontier: Frontier | None
     priorities: Priorities | None
+    alternatives: tuple[Alternative, ...]
+    prospects: Prospects
     every_run: EveryRun | None = None
 
 
@@ -105,6 +113,9 @@ def build_record(
     costs = give_ups(problem, choice)
     progress("priorities", 0.27)
     swayed = priorities(problem, choice)
+    progress("alternatives", 0.29)
+    others = alternatives(problem, choice, draws)
+    hopes = prospects(problem, choice, draws)
     progress("frontier", 0.3)
     several = len(problem.goals) > 1 and choice.status == "met"
     traded = trade_off(problem, choice) if several else None
@@ -136,4 +147,6 @@ def build_record(
         frontier=traded,
         priorities=swayed,
         every_run=whole,
+        alternatives=others,
+        prospects=hopes,
     )

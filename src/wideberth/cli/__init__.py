@@ -10,6 +10,7 @@ import click
 _COMMANDS = (
     "start",
     "check",
+    "plan",
     "fit",
     "shape",
     "recommend",
@@ -17,6 +18,7 @@ _COMMANDS = (
     "uncertainty",
     "window",
     "robustness",
+    "next",
     "memo",
 )
 

@@ -19,7 +19,9 @@ from wideberth.cli.frame import (
 )
 
 if TYPE_CHECKING:
+    from wideberth.decide.alternatives import Alternative
     from wideberth.decide.records import Choice
+    from wideberth.fit.records import Models
     from wideberth.study.records import Study
 
 
@@ -35,6 +37,7 @@ if TYPE_CHECKING:
     help="none: the bare optimum, without the room of the tolerances.",
 )
 @click.option("--give-ups", "costs", is_flag=True, help="Say what each limit and goal costs.")
+@click.option("--aims", is_flag=True, help="Set other aims beside the best compromise.")
 @seed_option
 @json_option
 @quiet_option
@@ -46,6 +49,7 @@ def command(
     fix: str | None,
     room: str,
     costs: bool,
+    aims: bool,
     seed: int | None,
     as_json: bool,
     quiet: bool,
@@ -54,15 +58,25 @@ def command(
 
     Example: wideberth recommend my-study --at catalyst=1.2,pressure=8,substrate=140
     """
-    from wideberth.chain.as_json import dumps, give_ups_json, recommend_json
+    from wideberth.chain.as_json import (
+        alternatives_json,
+        dumps,
+        give_ups_json,
+        prospects_json,
+        recommend_json,
+    )
     from wideberth.cli.progress import ProgressLine
+    from wideberth.decide.alternatives import alternatives
     from wideberth.decide.every_run import with_every_run
     from wideberth.decide.give_ups import give_ups
+    from wideberth.decide.prospects import prospects
     from wideberth.decide.recommend import solve
     from wideberth.fit.models import fit
     from wideberth.report.give_up_words import give_up_sentence
     from wideberth.report.left_out_words import every_run_sentences
+    from wideberth.report.prospect_words import prospect_sentences
     from wideberth.study.reading import read_study
+    from wideberth.uncertainty.assess import draws_for
 
     study = read_study(study_dir)
     progress = ProgressLine(quiet=quiet or as_json)
@@ -71,12 +85,15 @@ def command(
     problem, choice = solve(models, seed=seed, at=setting, fix=fixed, room=kept, progress=progress)
     whole = with_every_run(models, choice, fix=fixed, room=kept, progress=progress)
     found = give_ups(problem, choice, progress=progress) if costs else ()
+    draws = draws_for(problem, choice)
+    hopes = prospects(problem, choice, draws, progress=progress)
+    others = alternatives(problem, choice, draws, progress=progress) if aims else ()
     progress.close()
     if as_json:
-        content = recommend_json(choice, study, whole)
-        click.echo(
-            dumps({**content, "give_ups": give_ups_json(found)} if costs else content), nl=False
-        )
+        content = {**recommend_json(choice, study, whole), "prospects": prospects_json(hopes)}
+        content |= {"give_ups": give_ups_json(found)} if costs else {}
+        content |= {"alternatives": alternatives_json(others)} if aims else {}
+        click.echo(dumps(content), nl=False)
     else:
         print_choice(choice, study)
         if study.left_out:
@@ -85,6 +102,10 @@ def command(
             click.echo(f"  {stated.words()}")
         for sentence in every_run_sentences(whole, choice, study) if whole else ():
             click.echo(f"  {sentence}")
+        for sentence in prospect_sentences(hopes, choice, study):
+            click.echo(sentence)
+        if aims:
+            _print_aims(others, problem.models)
         if costs:
             click.echo("\nWhat each limit and goal costs")
         for one in found:
@@ -146,6 +167,18 @@ def _print_setting(choice: Choice, study: Study) -> None:
             (named(name, units[name]), format_setting(study, name, value), room, allowed, explored)
         )
     print_table(("factor", "set", "hold within", "allowed", "explored"), rows)
+
+
+def _print_aims(others: tuple[Alternative, ...], models: Models) -> None:
+    from wideberth.report.rows import alternative_header, alternative_row
+
+    click.echo("\nOther aims side by side (in brackets: the spread that setting errors alone make)")
+    study = models.study
+    rows = [alternative_row(one, others, study) for one in others if one.setpoint is not None]
+    print_table(alternative_header(models), rows)
+    for one in others:
+        if one.reason:
+            click.echo(f"  {one.aim}: {one.reason}")
 
 
 def _ends(ends: tuple[float, float], digits: int) -> str:

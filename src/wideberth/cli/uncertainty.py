@@ -61,12 +61,14 @@ def command(
 
 def print_uncertainty(sure: Uncertainty, choice: Choice, study: Study) -> None:
     """Print how sure a choice is, on one screen."""
-    from wideberth.report.numbers import decimals_of, named
+    from wideberth.report.numbers import named
+    from wideberth.report.rows import region_header, region_row
     from wideberth.report.wording import (
         CAUTIONS,
         difference_words,
         location_sentence,
         loss_sentence,
+        lost_sentences,
         setting_words,
         status_sentence,
         today_sentences,
@@ -83,19 +85,16 @@ def print_uncertainty(sure: Uncertainty, choice: Choice, study: Study) -> None:
     click.echo("\nWhere the optimum may lie")
     click.echo(f"  {location_sentence(sure)}")
     if sure.region is not None:
-        factors = {factor.name: factor for factor in study.numeric}
-        rows = [
-            (
-                named(name, factors[name].unit),
-                f"{low:.{decimals_of(factors[name])}f} to {high:.{decimals_of(factors[name])}f}",
-            )
-            for name, (low, high) in sure.region.ranges.items()
-        ]
-        print_table(("factor", f"{100 * sure.region.level:g} % region"), rows)
+        rows = [region_row(sure, factor, study) for factor in study.numeric]
+        print_table(region_header(sure), rows)
     for name, share in sure.level_shares.items():
         click.echo(f"  {name}: best in {100 * share:.0f} of 100 draws.")
     click.echo("\nWhat the setting is worth")
-    for sentence in (*together_sentences(sure), *loss_sentence(sure, choice)):
+    for sentence in (
+        *together_sentences(sure),
+        *lost_sentences(sure),
+        *loss_sentence(sure, choice),
+    ):
         click.echo(f"  {sentence}")
     if sure.today is not None:
         click.echo(f"\nAgainst today ({setting_words(study, sure.today.setting)})")

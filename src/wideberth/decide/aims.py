@@ -22,6 +22,7 @@ from wideberth.decide.program import Program
 from wideberth.decide.questions import (
     Question,
     best_desirability,
+    largest_inside,
     largest_margin,
     largest_uncapped,
     largest_value,
@@ -34,7 +35,9 @@ from wideberth.study.records import FloatArray
 _GRADED_BELOW = 0.05
 _FIRST_TARGET = 1e-2
 _MET = -1e-9
+_MET_FLOOR = 1e-9
 _STEEP = 20.0
+_HAIR = 1e-6
 
 Scorer = Callable[[Arena, FloatArray, FloatArray], FloatArray]
 """Takes the arena, settings (N, k) and their hard values (n_hard, N)."""
@@ -159,6 +162,60 @@ def relaxation(limit: int) -> Aim:
         return apart(arena, values)[0][:, None] - _FIRST_TARGET
 
     return Aim(least_relaxation(limit), score, graded, targets, holds_limits=False)
+
+
+def least_of(curve: FloatArray, goal_floor: FloatArray) -> Aim:
+    """Aim at the least value of a quadratic, coefficients (p,), inside all limits.
+
+    Every goal's target keeps its floor (n_goals,).
+    """
+
+    def value(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+        result: FloatArray = -(features(x) @ curve)
+        return result
+
+    def program(arena: Arena, cuts: Cuts) -> Program:
+        return largest_inside(-curve, goal_floor)(arena, cuts)
+
+    kept = _above_floor(goal_floor, value)
+    graded = _toward_floor(goal_floor, value)
+    return Aim(program, kept, graded, _just_below(value), holds_limits=True)
+
+
+def most_of(share: Callable[[FloatArray], FloatArray], goal_floor: FloatArray) -> Aim:
+    """Aim at the largest ``share``, a function of settings (N, k), inside all limits.
+
+    Every goal's target keeps its floor (n_goals,). Refined on the smallest margin, which is smooth
+    where a simulated share is not; ties go to the larger margin.
+    """
+
+    def value(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+        margin = _smallest_margin(arena, x, values)
+        return share(x) + _HAIR * margin / (1.0 + np.abs(margin))
+
+    def program(arena: Arena, cuts: Cuts) -> Program:
+        return largest_margin(arena, cuts, goal_floor)
+
+    kept = _above_floor(goal_floor, value)
+    graded = _toward_floor(goal_floor, value)
+    return Aim(program, kept, graded, _just_below(_smallest_margin), holds_limits=True)
+
+
+def _above_floor(goal_floor: FloatArray, value: Scorer) -> Scorer:
+    def score(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+        short = (goal_floor - _targets_of_goals(arena, x)).max(axis=1, initial=-np.inf)
+        return np.where(short <= _MET_FLOOR, value(arena, x, values), -np.inf)
+
+    return score
+
+
+def _toward_floor(goal_floor: FloatArray, value: Scorer) -> Scorer:
+    def graded(arena: Arena, x: FloatArray, values: FloatArray) -> FloatArray:
+        short = np.minimum(_targets_of_goals(arena, x) - goal_floor, 0.0).sum(axis=1)
+        result: FloatArray = value(arena, x, values) + _STEEP * short
+        return result
+
+    return graded
 
 
 def tie_break(goal_floor: FloatArray, least_log_d: FloatArray | float, *, by_margin: bool) -> Aim:

@@ -92,6 +92,8 @@ class Arena:
     goal_means : ndarray, shape (n_goals, p) or (n_goals, N, p)
         Fitted means of the responses with a goal, block average.
     hard : tuple of HardRow
+    near : tuple of ndarray, shape (k,) each
+        Coded settings from which every search starts as well.
     """
 
     levels: tuple[int, ...]
@@ -100,6 +102,7 @@ class Arena:
     goals: tuple[ResolvedGoal, ...]
     goal_means: FloatArray
     hard: tuple[HardRow, ...]
+    near: tuple[FloatArray, ...] = ()
 
     @property
     def n_factors(self) -> int:

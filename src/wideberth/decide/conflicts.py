@@ -11,6 +11,7 @@ from itertools import combinations
 import numpy as np
 
 from wideberth.decide.aims import relaxation
+from wideberth.decide.emptiness import none_holds
 from wideberth.decide.problem import Mode, Problem, arena
 from wideberth.decide.records import Conflict
 from wideberth.decide.search import HOLDS, find_for, find_safest
@@ -80,6 +81,7 @@ def _conflict(problem: Problem, mode: Mode, limits: tuple[int, ...]) -> Conflict
         limits=tuple((side.response, side.side, side.value) for side in sides),
         text=f"{text}; relaxed{alone} to {way} it would be free",
         relaxed=tuple(relaxed),
+        proven=none_holds(problem, mode, limits),
     )
 
 
@@ -98,11 +100,13 @@ def _relaxed_value(problem: Problem, mode: Mode, limits: tuple[int, ...], limit:
     return float(outward * np.ceil(outward * value / unit + 1e-9) * unit)
 
 
-def conflict_of_steps(problem: Problem) -> Conflict:
+def conflict_of_steps(problem: Problem, mode: Mode) -> Conflict:
     """Say that the limits hold between the settable steps, but on none of them."""
     return Conflict(
         tuple((side.response, side.side, side.value) for side in problem.sides),
         "no setting on the settable steps holds every limit; between the steps one does",
+        (),
+        none_holds(problem, mode, stepped=True),
     )
 
 

@@ -12,7 +12,7 @@ from dataclasses import dataclass, replace
 import numpy as np
 
 from wideberth.decide.judge import own_setting
-from wideberth.decide.problem import Problem, mode_of
+from wideberth.decide.problem import Place, Problem, mode_of
 from wideberth.decide.proving import best_everywhere
 from wideberth.decide.records import Choice
 from wideberth.progress import Progress, silent
@@ -83,10 +83,7 @@ def priorities(
     return Priorities(tuple(sways), own_setting(problem.study, *equal))
 
 
-_Place = tuple[tuple[int, ...], FloatArray]
-
-
-def _best(problem: Problem) -> _Place | None:
+def _best(problem: Problem) -> Place | None:
     """Find the free optimum over all levels."""
     found = best_everywhere(problem, mode_of(problem))
     return None if found is None else (found[0], found[1].x)
@@ -107,7 +104,7 @@ def _multiplied(problem: Problem, goal: int, by: float) -> Problem:
 
 
 def _turning(
-    problem: Problem, base: _Place, near: FloatArray, goal: int, farthest: float
+    problem: Problem, base: Place, near: FloatArray, goal: int, farthest: float
 ) -> float | None:
     """Bisect on a log scale for the priority at which the setting leaves."""
 

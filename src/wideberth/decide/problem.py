@@ -23,11 +23,14 @@ from wideberth.decide.simultaneous import simultaneous_factor
 from wideberth.fit.draws import Draws
 from wideberth.fit.records import Model, Models, design_map, surface
 from wideberth.quadratic.terms import features, n_terms
-from wideberth.study.records import Response, Study
+from wideberth.study.records import FloatArray, Response, Study
 from wideberth.surface.explored import Explored, explored_region
 
 Mode = Literal["simultaneous", "pointwise", "means"]
 """How limits are guarded: as stated, as for settings fixed in advance, or not at all."""
+
+Place = tuple[tuple[int, ...], FloatArray]
+"""Levels of the categorical factors and a coded setting (k,) of the others."""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -62,7 +65,8 @@ class Problem:
     """All that a search for the setpoint needs.
 
     ``region`` is everything that may be searched, ``tight`` what is left of it for the middle of
-    a room. ``combinations`` are the levels of the categorical factors.
+    a room. ``combinations`` are the levels of the categorical factors; ``known`` are places worth
+    a start of every search.
     """
 
     models: Models
@@ -74,6 +78,7 @@ class Problem:
     sides: tuple[LimitSide, ...]
     guarding: Mapping[str, Guarding]
     combinations: tuple[tuple[int, ...], ...]
+    known: tuple[Place, ...] = ()
 
     @property
     def study(self) -> Study:
@@ -133,6 +138,7 @@ def arena(
         goals=goals,
         goal_means=np.array(means).reshape(len(goals), p),
         hard=(*rows, *bare.hard),
+        near=tuple(x for where, x in problem.known if where == levels),
     )
 
 
@@ -244,7 +250,7 @@ def _guarding(models: Models, response: Response, bare: tuple[Arena, ...], seed:
     guard = Guard(
         limit.guard,
         model.df_error,
-        _split_confidence(study, limit.confidence, limit.guard),
+        split_confidence(study, limit.confidence, limit.guard),
         limit.share,
     )
     s = model.s or 0.0
@@ -278,7 +284,7 @@ def _guarding(models: Models, response: Response, bare: tuple[Arena, ...], seed:
     return Guarding(guard, smooth, factor, scale, True, True)
 
 
-def _split_confidence(study: Study, confidence: float, kind: str) -> float:
+def split_confidence(study: Study, confidence: float, kind: str) -> float:
     """Share the risk equally among all sides of ``share`` limits."""
     if kind != "share":
         return confidence

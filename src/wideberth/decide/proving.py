@@ -8,6 +8,7 @@ import numpy as np
 
 from wideberth.decide.arena import no_cuts
 from wideberth.decide.certificate import Certificate, bound_desirability
+from wideberth.decide.overlooked import look_again
 from wideberth.decide.problem import Mode, Problem, arena
 from wideberth.decide.search import Found, find_best, local_optima
 from wideberth.decide.settable import Grid
@@ -40,6 +41,11 @@ def possible_gains(
         For every combination of levels the free optimum, ``None`` where no setting holds.
     free, settable : float
         D reached by the free optimum and by the setpoint.
+
+    Raises
+    ------
+    Overlooked
+        When a proof meets a better setting than the search did.
     """
     if not problem.goals:
         return Gains(None, None)
@@ -52,6 +58,8 @@ def possible_gains(
         if best is not None and reached:
             optima = local_optima(rows, best)
         whole = bound_desirability(rows, cuts, optima, free)
+        if whole.better is not None:
+            look_again(problem, (levels, whole.better))
         free_bound = max(free_bound, whole.bound)
         on_grid: Certificate = whole
         if grid.axes:

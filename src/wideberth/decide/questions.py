@@ -95,6 +95,16 @@ def largest_value(curve: FloatArray) -> Question:
     return question
 
 
+def largest_inside(curve: FloatArray, goal_floor: FloatArray) -> Question:
+    """Maximise a quadratic (p,) inside all limits, every goal's target above a floor (n_goals,)."""
+
+    def question(arena: Arena, cuts: Cuts) -> Program:
+        rows = [_Row(curve, 0), *_floor_rows(arena, goal_floor)]
+        return _program(arena, [*rows, *_hard_rows(arena, cuts, lambda _: _NO_TARGET)], np.ones(1))
+
+    return question
+
+
 def _goal_sides(arena: Arena, goal: int) -> list[tuple[FloatArray, float]]:
     """Give each side's uncapped desirability as coefficients, with the power of its target."""
     parts = sides(arena.goals[goal])

@@ -7,14 +7,15 @@ other than `met` is never called a recommendation.
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import replace
 
 import numpy as np
 
-from wideberth.decide.aims import BEST, LEAST_POOR, NEAREST, SAFEST, Aim
+from wideberth.decide.answers import Answer, best_answer, nearest_answer, reaches
 from wideberth.decide.confirmation import confirmation_ranges, confirmation_runs
 from wideberth.decide.conflicts import can_hold, conflict_of_steps, side_text, smallest_conflicts
 from wideberth.decide.edges import edge_sentences
+from wideberth.decide.emptiness import none_holds
 from wideberth.decide.findings import choice_findings, rests_on_unusable
 from wideberth.decide.judge import (
     constraint_verdicts,
@@ -25,32 +26,18 @@ from wideberth.decide.judge import (
     predictions,
     read_setting,
 )
+from wideberth.decide.overlooked import until_nothing_is_overlooked
 from wideberth.decide.pins import with_pins
 from wideberth.decide.problem import Mode, Problem, arena, build_problem, mode_of
 from wideberth.decide.proving import Gains, possible_gains
-from wideberth.decide.records import Bare, Choice, Conflict, LimitVerdict, Status
+from wideberth.decide.records import Bare, Choice, LimitVerdict, Status
 from wideberth.decide.region import inside
-from wideberth.decide.search import HOLDS, Found, find_best, find_nearest
-from wideberth.decide.settable import on_steps, settable_grid
+from wideberth.decide.search import Found
+from wideberth.decide.settable import settable_grid
 from wideberth.errors import refusal
 from wideberth.fit.records import Models
 from wideberth.progress import Progress, silent
 from wideberth.study.records import Setting
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class _Answer:
-    """A setting found under one mode: free optimum and settable one, at one combination.
-
-    ``everywhere`` holds the free optimum of every combination of levels, ``None`` without one.
-    """
-
-    levels: tuple[int, ...]
-    mode: Mode
-    free: Found
-    settable: Found
-    off_steps: bool = False
-    everywhere: tuple[tuple[tuple[int, ...], Found | None], ...] = ()
 
 
 def recommend(
@@ -120,30 +107,41 @@ def solve(
     if fix:
         problem = with_pins(problem, fix)
     progress("search", 0.4)
-    choice = _judge_given(problem, at) if at is not None else _choose(problem)
+    if at is not None:
+        choice = _judge_given(problem, at)
+    else:
+        problem, choice = until_nothing_is_overlooked(problem, _choose)
+        if choice.unrounded.setpoint is not None:
+            place = read_setting(study, choice.unrounded.setpoint)
+            problem = replace(problem, known=(*problem.known, place))
     progress("search", 1.0)
     return problem, replace(choice, seed=chosen_seed)
 
 
 def _choose(problem: Problem) -> Choice:
-    conflicts: tuple[Conflict, ...] = ()
-    answer = _best_answer(problem, "simultaneous") if problem.possible else None
+    answer = best_answer(problem, "simultaneous") if problem.possible else None
     if answer is not None:
-        status: Status = "met" if _reaches(answer) else "unreached"
-        return _describe(problem, answer, status, conflicts)
-    pointwise = _best_answer(problem, "pointwise") if problem.possible else None
+        status: Status = "met" if reaches(answer) else "unreached"
+        return _describe(problem, answer, status)
+    pointwise = best_answer(problem, "pointwise") if problem.possible else None
     if pointwise is not None:
-        return _describe(problem, pointwise, "provisional", conflicts)
+        none = none_holds(problem, "simultaneous", stepped=True)
+        return replace(_describe(problem, pointwise, "provisional"), none_holds=none)
     status, mode = _why_not(problem)
-    if status == "conflict":
-        every = tuple(range(len(problem.sides)))
-        between = can_hold(problem, mode, every)
-        conflicts = (conflict_of_steps(problem),) if between else smallest_conflicts(problem, mode)
     if not problem.possible and status == "unproven":
-        shown = _best_answer(problem, "means")
+        shown = best_answer(problem, "means")
         if shown is not None:
-            return _describe(problem, shown, status, conflicts)
-    return _describe(problem, _nearest_answer(problem, mode), status, conflicts)
+            return _describe(problem, shown, status)
+    nearest = _describe(problem, nearest_answer(problem, mode), status)
+    if status == "unproven":
+        return replace(nearest, none_holds=none_holds(problem, mode, stepped=True))
+    every = tuple(range(len(problem.sides)))
+    between = can_hold(problem, mode, every)
+    conflicts = (
+        (conflict_of_steps(problem, mode),) if between else smallest_conflicts(problem, mode)
+    )
+    proven = any(conflict.proven for conflict in conflicts)
+    return replace(nearest, conflicts=conflicts, none_holds=proven)
 
 
 def _why_not(problem: Problem) -> tuple[Status, Mode]:
@@ -155,54 +153,6 @@ def _why_not(problem: Problem) -> tuple[Status, Mode]:
         return "unproven", "means"
     provable = all(can_hold(problem, "pointwise", (limit,)) for limit in every)
     return ("conflict" if provable else "unproven"), "pointwise"
-
-
-def _best_answer(problem: Problem, mode: Mode) -> _Answer | None:
-    """Find the best settable setting over all levels that holds every limit in this mode."""
-    grid = settable_grid(problem.study.numeric, problem.tight)
-    best: _Answer | None = None
-    everywhere: list[tuple[tuple[int, ...], Found | None]] = []
-    for levels in problem.combinations:
-        rows = arena(problem, levels, mode)
-        free = find_best(rows)
-        everywhere.append((levels, free))
-        if free is None:
-            continue
-        settable = on_steps(rows, grid, _aim(problem, free), free)
-        if settable is None or settable.worst.min(initial=np.inf) < HOLDS:
-            continue
-        answer = _Answer(levels, mode, free, settable)
-        if best is None or _order(answer) > _order(best):
-            best = answer
-    return None if best is None else replace(best, everywhere=tuple(everywhere))
-
-
-def _nearest_answer(problem: Problem, mode: Mode) -> _Answer:
-    """Find the setting that breaks the limits least over all levels."""
-    grid = settable_grid(problem.study.numeric, problem.tight)
-    answers = []
-    for levels in problem.combinations:
-        rows = arena(problem, levels, mode)
-        free = find_nearest(rows)
-        settable = on_steps(rows, grid, NEAREST, free)
-        answers.append(_Answer(levels, mode, free, settable or free, settable is None))
-    return max(answers, key=lambda answer: answer.settable.score)
-
-
-def _aim(problem: Problem, free: Found) -> Aim:
-    if not problem.goals:
-        return SAFEST
-    return BEST if np.isfinite(free.score) else LEAST_POOR
-
-
-def _order(answer: _Answer) -> tuple[float, float]:
-    """Order answers by what the free optimum scores when settable, then by the worst margin."""
-    score = answer.settable.score if np.isfinite(answer.free.score) else -np.inf
-    return score, float(answer.settable.worst.min(initial=np.inf))
-
-
-def _reaches(answer: _Answer) -> bool:
-    return bool(np.isfinite(answer.free.score) and np.isfinite(answer.settable.score))
 
 
 def _judge_given(problem: Problem, at: Setting) -> Choice:
@@ -226,14 +176,13 @@ def _judge_given(problem: Problem, at: Setting) -> Choice:
     if not inside(problem.region, x):
         status = "unsupported"
     found = Found(x, 0.0, np.zeros(0), (), np.zeros((0, len(x))))
-    return _describe(problem, _Answer(levels, "simultaneous", found, found), status, (), asked=True)
+    return _describe(problem, Answer(levels, "simultaneous", found, found), status, asked=True)
 
 
 def _describe(
     problem: Problem,
-    answer: _Answer,
+    answer: Answer,
     status: Status,
-    conflicts: tuple[Conflict, ...],
     *,
     asked: bool = False,
 ) -> Choice:
@@ -270,7 +219,8 @@ def _describe(
         ruling=_ruling(verdicts),
         factors=factor_surroundings(problem, x),
         edge=edge,
-        conflicts=conflicts,
+        conflicts=(),
+        none_holds=None,
         confirmation=confirmation_runs(problem, levels, x) if status == "provisional" else None,
         confirm=confirmation_ranges(problem, levels, x),
         findings=choice_findings(

@@ -96,12 +96,14 @@ class ConstraintVerdict:
 class Conflict:
     """A smallest set of limits that cannot hold together, each as (response, side, value).
 
-    ``relaxed`` gives for each member the value to which it alone would have to be relaxed.
+    ``relaxed`` gives for each member the value to which it alone would have to be relaxed;
+    ``proven`` tells whether a proof says so, or only the search.
     """
 
     limits: tuple[tuple[str, Side, float], ...]
     text: str
-    relaxed: tuple[float, ...] = ()
+    relaxed: tuple[float, ...]
+    proven: bool
 
 
 @dataclass(frozen=True, slots=True)
@@ -169,6 +171,9 @@ class Choice:
         The limit with the smallest margin in words, ``""`` without limits.
     edge : tuple of str
         Sentences about bounds that the setpoint leans on and where it wants to go.
+    none_holds : bool or None
+        Where no setting was found that holds what the status says none holds: whether that is
+        proven. ``None`` where one was found, or a setting was given.
     """
 
     status: Status
@@ -186,6 +191,7 @@ class Choice:
     factors: Mapping[str, FactorRange]
     edge: tuple[str, ...]
     conflicts: tuple[Conflict, ...]
+    none_holds: bool | None
     confirmation: Confirmation | None
     confirm: Mapping[str, ConfirmationRange]
     findings: tuple[Finding, ...]

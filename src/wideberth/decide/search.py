@@ -86,16 +86,16 @@ def find_best(arena: Arena) -> Found | None:
     return None if best is None else _settle_ties(arena, best)
 
 
-def local_optima(arena: Arena, best: Found) -> FloatArray:
-    """Give the optima of D that a search ends in, the best one first: (n, k), at most six.
+def local_optima(arena: Arena, best: Found, aim: Aim = BEST) -> FloatArray:
+    """Give the optima that a search for an aim ends in, the best one first: (n, k), at most six.
 
     They hold the rows at the places of the room that ``best`` met, no more.
     """
-    starts = _screen(arena, BEST, best.cuts, [best.x])
+    starts = _screen(arena, aim, best.cuts, [best.x])
     values = hard_values(arena, best.cuts, starts)
-    targets = BEST.targets(arena, starts, values)
-    ended = refine(BEST.program(arena, best.cuts), starts, targets, arena.region.basis)
-    settings, _ = rank(arena, BEST, best.cuts, np.concatenate([best.x[None, :], ended.x]))
+    targets = aim.targets(arena, starts, values)
+    ended = refine(aim.program(arena, best.cuts), starts, targets, arena.region.basis)
+    settings, _ = rank(arena, aim, best.cuts, np.concatenate([best.x[None, :], ended.x]))
     return settings[_apart(settings, _BASIN_WIDTH, _FOLLOWED)]
 
 
@@ -106,7 +106,13 @@ def find_safest(arena: Arena) -> Found:
 
 def find_for(arena: Arena, aim: Aim) -> Found:
     """Find the best setting for any aim that some setting of the region can serve."""
-    return _expect(_search(arena, aim, no_cuts(arena), [find_safest(arena).x]))
+    return _expect(seek(arena, aim))
+
+
+def seek(arena: Arena, aim: Aim) -> Found | None:
+    """Find the best setting for an aim, ``None`` when no setting can serve it."""
+    first = [find_safest(arena).x] if arena.limits else []
+    return _search(arena, aim, no_cuts(arena), first)
 
 
 def find_nearest(arena: Arena) -> Found:
@@ -127,7 +133,7 @@ def _expect(found: Found | None) -> Found:
 
 
 def _search(arena: Arena, aim: Aim, cuts: Cuts, first: list[FloatArray]) -> Found | None:
-    starts = _screen(arena, aim, cuts, first)
+    starts = _screen(arena, aim, cuts, [*first, *arena.near])
     for _ in range(_ROUNDS):
         values = hard_values(arena, cuts, starts)
         targets = aim.targets(arena, starts, values)

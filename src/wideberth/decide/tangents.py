@@ -29,6 +29,7 @@ class Row:
     """One hard row at one place of the room, in z: ``curve - weight * K(h)`` must not be negative.
 
     ``convex`` tells whether the tangent of K bounds it from below; else ``least`` does.
+    ``of_limit`` tells a limit from the ellipsoid.
     """
 
     curve: FloatArray
@@ -37,6 +38,7 @@ class Row:
     covariance: FloatArray
     convex: bool
     least: float
+    of_limit: bool
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -95,6 +97,7 @@ def relax(arena: Arena, cuts: Cuts) -> Relaxed:
                     mapped.T @ row.covariance @ mapped,
                     convex,
                     least,
+                    row.limit is not None,
                 )
             )
     return Relaxed(

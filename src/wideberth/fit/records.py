@@ -334,8 +334,19 @@ def design_map(
     ndarray, shape (p, q)
         With ``f`` the second-order terms at a setting, the model row there is ``f @ map``.
     """
-    mapped = np.zeros((n_terms(len(study.numeric)), len(model.terms)))
-    for column, term in enumerate(model.terms):
+    return terms_map(model.terms, study, levels=levels, block=block)
+
+
+def terms_map(
+    terms: tuple[Term, ...],
+    study: Study,
+    *,
+    levels: tuple[int, ...] = (),
+    block: int | None = None,
+) -> FloatArray:
+    """Give the map of `design_map` for terms that no model was fitted with yet."""
+    mapped = np.zeros((n_terms(len(study.numeric)), len(terms)))
+    for column, term in enumerate(terms):
         weight = 1.0
         if term.contrast is not None:
             factor, contrast = term.contrast

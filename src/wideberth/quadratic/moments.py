@@ -45,3 +45,18 @@ def setting_error_moments(stack: Stack, x: FloatArray, sd: FloatArray) -> Moment
     products = 2 * np.einsum("...ij,...ji->...i", bent, bent)
     parts = slope * slope * spread + products
     return Moments(shift, parts.sum(axis=-1), parts)
+
+
+def transmitted_variance(stack: Stack, sd: FloatArray) -> Stack:
+    """Give the variance of `setting_error_moments` as a quadratic of the setting itself.
+
+    The gradient is linear in the setting, so ``g'Sg`` is quadratic in it; exact.
+    """
+    spread = sd * sd
+    bent = stack.quad * spread[..., :, None]
+    held = 2 * np.einsum("...ij,...ji->...", bent, bent)
+    return Stack(
+        const=(stack.lin * stack.lin * spread).sum(axis=-1) + held,
+        lin=4 * np.einsum("...i,...ij->...j", stack.lin * spread, stack.quad),
+        quad=4 * np.einsum("...ia,i,...ib->...ab", stack.quad, spread, stack.quad),
+    )

@@ -6,15 +6,15 @@ from wideberth.chain.record import Record
 from wideberth.report.blocks import Block, Bullets, Drawing, Heading, Paragraph, Table
 from wideberth.report.numbers import format_range, format_setting, format_value, named, with_unit
 from wideberth.report.ridge_figure import draw_ridge
-from wideberth.report.rows import wander_row, window_row
+from wideberth.report.rows import region_header, region_row, wander_row, window_row
 from wideberth.report.shares_figure import draw_shares
 from wideberth.report.style import to_svg
 from wideberth.report.wording import (
     SINGLY_WARNING,
     difference_words,
-    ends_words,
     location_sentence,
     loss_sentence,
+    lost_sentences,
     setting_words,
     shares_words,
     today_sentences,
@@ -39,24 +39,21 @@ def _doubt(record: Record) -> list[Block]:
             " well; the spread of the answers is the doubt."
         )
     )
-    said = (location_sentence(sure), *together_sentences(sure), *loss_sentence(sure, record.choice))
+    said = (
+        location_sentence(sure),
+        *together_sentences(sure),
+        *lost_sentences(sure),
+        *loss_sentence(sure, record.choice),
+    )
     levels = tuple(
         f"{n}: best in {100 * s:.0f} of 100 draws." for n, s in sure.level_shares.items()
     )
     findings = tuple(finding.text for finding in sure.findings)
     blocks.append(Bullets("", (*said, *levels, *findings)))
     if sure.region is not None and record.choice.setpoint is not None:
-        rows = tuple(
-            (
-                named(factor.name, factor.unit),
-                format_setting(study, factor.name, record.choice.setpoint[factor.name]),
-                ends_words(factor, sure.region.ranges[factor.name]),
-            )
-            for factor in study.numeric
-        )
-        caption = f"Where the optimum may lie, {100 * sure.region.level:g} % region"
-        header = ("Factor", "Setting", "Smallest to largest in the region")
-        blocks.append(Table(caption, header, rows))
+        rows = tuple(region_row(sure, factor, study) for factor in study.numeric)
+        caption = "Where the optimum may lie: smallest to largest in its region, by how sure"
+        blocks.append(Table(caption, region_header(sure), rows))
     return [*blocks, *_corrected(record), *_against_today(record)]
 
 

@@ -12,6 +12,7 @@ from wideberth.report.frontier_figure import draw_frontier
 from wideberth.report.give_up_words import bound_words, step_words
 from wideberth.report.left_out_words import every_run_sentences
 from wideberth.report.numbers import format_range, format_value, named, with_unit
+from wideberth.report.options import options
 from wideberth.report.rows import frontier_row
 from wideberth.report.style import to_svg
 from wideberth.report.wording import (
@@ -50,6 +51,7 @@ def evidence(record: Record) -> tuple[Block, ...]:
         *_maps(record),
         *assurance(record),
         *_goals(record),
+        *options(record),
         *_models(record),
         *_left_out(record),
         *_geometry(record),

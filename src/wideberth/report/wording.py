@@ -34,11 +34,21 @@ _ASKED_SENTENCE: dict[Status, str] = {
     "unreached": "This setting holds the limits but does not reach every goal.",
 }
 
+_NONE_PROVEN = (
+    "That none does is proven on the fitted equations, over every allowed setting; it was not"
+    " merely searched for."
+)
+_NONE_FOUND = "None was found; the proof that there is none stayed open within its budget of boxes."
+
 
 def status_sentence(choice: Choice) -> str:
     """Say what the status means, for a setting that was found or one that was given."""
     found = STATUS_SENTENCE[choice.status]
-    return _ASKED_SENTENCE.get(choice.status, found) if choice.asked else found
+    if choice.asked:
+        return _ASKED_SENTENCE.get(choice.status, found)
+    if choice.none_holds is None or choice.status == "unsupported":
+        return found
+    return f"{found} {_NONE_PROVEN if choice.none_holds else _NONE_FOUND}"
 
 
 def proof_sentence(choice: Choice) -> str:
@@ -138,6 +148,15 @@ SINGLY_WARNING = (
 )
 
 
+_HARDLY_LOST = 0.99
+_COUNTS = 0.005
+_SOURCE = {
+    "equations": "doubt about the equations",
+    "batches": "noise from batch to batch",
+    "settings": "wandering settings",
+}
+
+
 def batches_in_100(share: float) -> str:
     """Write a share of batches as whole batches in 100, no finer."""
     if share > 0.99:
@@ -173,8 +192,7 @@ def location_sentence(sure: Uncertainty) -> str:
     """Say how well the runs locate the optimum."""
     if sure.region is None:
         return "Where the optimum lies cannot be said."
-    share = 100 * sure.region.share_of_explored
-    filled = "less than 1 %" if share < 1 else f"{share:.0f} %"
+    filled = _filled(sure.region.share_of_explored)
     if not sure.region.determined:
         return (
             f"The runs do not determine where the optimum lies: it may be anywhere in {filled} of"
@@ -187,7 +205,31 @@ def location_sentence(sure: Uncertainty) -> str:
     edge = sure.edge_share or 0.0
     if edge >= 0.2:
         sentence += f"; in {100 * edge:.0f} of 100 draws it lies on the edge of that"
+    if sure.region.share_of_edge is not None:
+        sentence += f", and {_filled(sure.region.share_of_edge)} of the edge belongs to the region"
     return sentence + "."
+
+
+def _filled(share: float) -> str:
+    return "less than 1 %" if share < 0.01 else f"{100 * share:.0f} %"
+
+
+def lost_sentences(sure: Uncertainty) -> tuple[str, ...]:
+    """Say which limits and which source of error cost batches; empty where none are lost."""
+    if sure.losses is None or sure.conformance is None or sure.conformance.mean > _HARDLY_LOST:
+        return ()
+    limits = sorted(sure.losses.limits.items(), key=lambda item: -item[1])
+    broken = [f"{name} by {_lost(share)} of 100" for name, share in limits if share >= _COUNTS]
+    sources = sorted(sure.losses.sources.items(), key=lambda item: -item[1])
+    gains = [f"{_SOURCE[name]} {_lost(gain)}" for name, gain in sources if gain >= _COUNTS]
+    said = [f"Batches that break a limit: {', '.join(broken)}."] if broken else []
+    if gains:
+        said.append(f"Batches of 100 gained if one source were gone: {', '.join(gains)}.")
+    return tuple(said)
+
+
+def _lost(share: float) -> str:
+    return f"{100 * share:.0f}"
 
 
 def loss_sentence(sure: Uncertainty, choice: Choice) -> tuple[str, ...]:

@@ -9,6 +9,8 @@ from difflib import get_close_matches
 from wideberth.errors import Fault
 
 RESERVED = ("constant", "per", "run", "block", "kind", "note", "weight", "sample")
+AS_RUN = " as run"
+"""Ending of the columns that hold what a setting really was."""
 _NAME = re.compile(r"[^\W\d_][\w .\-]*")
 
 
@@ -26,6 +28,9 @@ def name_faults(
                     where,
                     "start with a letter; use letters, digits, spaces, _, - and .",
                 )
+            elif name.endswith(AS_RUN):
+                mend = f"only columns of the run sheet end in '{AS_RUN.strip()}'"
+                yield Fault(f"'{name}' would read as a setting as run", where, mend)
             elif name.lower() in RESERVED:
                 yield Fault(f"'{name}' has a meaning of its own here", where, "choose another name")
             if name in seen:

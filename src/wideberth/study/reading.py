@@ -4,10 +4,14 @@ from __future__ import annotations
 
 import hashlib
 import tomllib
+from collections.abc import Mapping
 from pathlib import Path
+from types import MappingProxyType
+from typing import Any
 
 from wideberth.errors import Fault, InputError
 from wideberth.study.lines import key_lines
+from wideberth.study.plan_statement import goes_with, plan_choice
 from wideberth.study.records import Constraint, Context, RegionChoice, Study
 from wideberth.study.schema import RadiusTable, parse_tables
 from wideberth.study.sheet import read_sheet
@@ -22,7 +26,29 @@ def read_study(directory: Path | str) -> Study:
     InputError
         Carrying every fault of the file and the sheet: what, where, how to mend.
     """
-    folder = Path(directory)
+    return _read(Path(directory), {}, draft=False)
+
+
+def read_draft(
+    directory: Path | str, overrides: Mapping[str, object] = MappingProxyType({})
+) -> Study:
+    """Read a study whose runs are still to be planned: the sheet may be missing or empty.
+
+    Parameters
+    ----------
+    overrides : mapping
+        Keys of ``[plan]`` and their values, instead of the stated ones. With another design,
+        stated keys that it does not take are dropped.
+
+    Raises
+    ------
+    InputError
+        Carrying every fault of the file, the sheet and the overrides.
+    """
+    return _read(Path(directory), overrides, draft=True)
+
+
+def _read(folder: Path, overrides: Mapping[str, object], *, draft: bool) -> Study:
     raw = _read_bytes(folder / STUDY_FILE, "start a study there first")
     text = _decode(raw)
     try:
@@ -32,6 +58,7 @@ def read_study(directory: Path | str) -> Study:
             [Fault(f"not valid TOML: {error}", STUDY_FILE, "mend the line that is named")]
         ) from error
     lines = key_lines(text)
+    _override(data, overrides)
     tables, faults = parse_tables(data, lines)
     if tables is None:
         raise InputError(faults)
@@ -39,11 +66,14 @@ def read_study(directory: Path | str) -> Study:
     found = list(statement.faults())
     if found:
         # the sheet can still be read against the names when those are sound
-        raise InputError([*found, *_sheet_faults(folder, statement)])
+        raise InputError([*found, *_sheet_faults(folder, statement, draft=draft)])
     factors, responses = statement.factors(), statement.responses()
     left_out = statement.left_out()
-    sheet = read_sheet(folder, tables.study.runs, factors, responses, left_out)
-    late = [*sheet.faults, *statement.block_faults(sheet)]
+    sheet = read_sheet(folder, tables.study.runs, factors, responses, left_out, draft=draft)
+    late = [*sheet.faults, *(() if draft else statement.block_faults(sheet))]
+    if draft and sheet.faults:
+        what = "the sheet that is there does not fit the study"
+        late.append(Fault(what, tables.study.runs, "mend it, or move it away to plan a new one"))
     if late or sheet.runs is None:
         raise InputError(late)
     hashes = {STUDY_FILE: hashlib.sha256(raw).hexdigest(), sheet.runs.file: sheet.sha256}
@@ -65,6 +95,7 @@ def read_study(directory: Path | str) -> Study:
         else RegionChoice(region),
         future_blocks=tables.blocks.future if tables.blocks and sheet.runs.blocks else None,
         today=dict(tables.today),
+        plan=plan_choice(tables.plan),
         runs=sheet.runs,
         sha256=hashes,
         notes=sheet.notes,
@@ -72,6 +103,31 @@ def read_study(directory: Path | str) -> Study:
         every_run=sheet.every_run,
         assays=sheet.assays,
     )
+
+
+def _override(data: dict[str, Any], overrides: Mapping[str, object]) -> None:
+    """Put the overrides in place of what ``[plan]`` states, checked on their own first."""
+    if not overrides:
+        return
+    _, faults = parse_tables({"plan": dict(overrides)}, {})
+    if faults:
+        said = "study.toml, plan."
+        raise InputError(
+            [
+                Fault(f.what, f"--{f.where.removeprefix(said).replace('_', '-')}", f.mend)
+                for f in faults
+            ]
+        )
+    stated = data.get("plan", {})
+    if not isinstance(stated, dict):
+        return
+    design = overrides.get("design")
+    kept = {
+        key: value for key, value in stated.items() if design is None or goes_with(key, str(design))
+    }
+    if design not in (None, "central composite") and isinstance(kept.get("centre_runs"), list):
+        del kept["centre_runs"]
+    data["plan"] = kept | dict(overrides)
 
 
 def _read_bytes(path: Path, mend: str) -> bytes:
@@ -94,7 +150,7 @@ def _decode(raw: bytes) -> str:
         ) from error
 
 
-def _sheet_faults(folder: Path, statement: Statement) -> tuple[Fault, ...]:
+def _sheet_faults(folder: Path, statement: Statement, *, draft: bool) -> tuple[Fault, ...]:
     """Read the sheet as well when factors and responses can be built at all."""
     tables = statement.tables
     sound = (
@@ -107,4 +163,5 @@ def _sheet_faults(folder: Path, statement: Statement) -> tuple[Fault, ...]:
     )
     if not sound:
         return ()
-    return read_sheet(folder, tables.study.runs, statement.factors(), statement.responses()).faults
+    factors, responses = statement.factors(), statement.responses()
+    return read_sheet(folder, tables.study.runs, factors, responses, draft=draft).faults

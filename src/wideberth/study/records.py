@@ -54,6 +54,8 @@ class NumericFactor:
     tolerance: float | None = None
     settable_step: Decimal | None = None
     scale: Literal["linear", "log"] = "linear"
+    reading_error: float | None = None
+    """How far a setting as run may be off the planned one and still count as the planned one."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -192,6 +194,50 @@ class RegionChoice:
 
 
 @dataclass(frozen=True, slots=True)
+class PlanChoice:
+    """The runs to be planned, as stated in ``[plan]`` or by the options of ``plan``.
+
+    Attributes
+    ----------
+    core : str or None
+        Which fraction of the two-level runs; ``None``: the smallest of resolution V or better.
+    axial : str or float
+        How far the axial runs reach, by name or as a coded distance.
+    shrink : float
+        The whole design is drawn in toward its centre by this factor.
+    centre_runs : tuple of (int, int) or None
+        For each block of two-level runs, and for the block of axial runs; ``None``: by default.
+    runs : int or None
+        Size of an optimal plan.
+    hold : tuple of str or None
+        Responses whose limits every run must hold, by the fitted models; ``None``: those that
+        are guarded by ``share``.
+    error_sd : mapping
+        Expected standard deviation of one run, by response.
+    """
+
+    design: Literal["central composite", "box-behnken", "two-level", "optimal"] = (
+        "central composite"
+    )
+    core: Literal["full", "half", "quarter", "eighth", "sixteenth"] | None = None
+    axial: str | float = "rotatable"
+    shrink: float = 1.0
+    centre_runs: tuple[int, int] | None = None
+    blocks: int = 1
+    replicates: int = 1
+    runs: int | None = None
+    criterion: Literal["D", "I"] = "I"
+    order: Literal[1, 2] = 2
+    error_sd: Mapping[str, float] = field(default_factory=dict)
+    hold: tuple[str, ...] | None = None
+
+    @property
+    def fitted_order(self) -> Literal[1, 2]:
+        """Order of the model that the plan is judged by; a design brings its own terms."""
+        return self.order if self.design == "optimal" else 2
+
+
+@dataclass(frozen=True, slots=True)
 class Context:
     """Texts for the memo; empty when not stated."""
 
@@ -239,6 +285,8 @@ class Runs:
     others : mapping of str to tuple of str
         Cells of the sheet's other columns (lot, operator); never fitted, looked at in the
         diagnosis.
+    filled : bool
+        Something was entered that a plan does not write: a result, a setting as run, a lot, a note.
     """
 
     file: str
@@ -251,6 +299,7 @@ class Runs:
     kind: tuple[str, ...]
     order: tuple[int, ...] | None
     note: tuple[str, ...]
+    filled: bool = False
     weight: FloatArray | None = None
     left_out: tuple[int, ...] = ()
     others: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
@@ -280,6 +329,7 @@ class Study:
     runs: Runs
     sha256: Mapping[str, str] = field(default_factory=dict)
     """Hash of each input file, by name, and of the whole study under ``"study"``."""
+    plan: PlanChoice = PlanChoice()
     notes: tuple[Finding, ...] = ()
     """What reading found worth saying (a default taken, an empty cell)."""
     left_out: tuple[LeftOut, ...] = ()

@@ -16,7 +16,9 @@ from wideberth.errors import Fault
 from wideberth.study.lines import KeyPath
 
 Number = Annotated[float, Field(allow_inf_nan=False)]
+Positive = Annotated[Number, Field(gt=0)]
 Pair = Annotated[list[Number], Field(min_length=2, max_length=2)]
+CountPair = Annotated[list[Annotated[int, Field(ge=0)]], Field(min_length=2, max_length=2)]
 Text = Annotated[str, Field(min_length=1)]
 
 
@@ -54,6 +56,7 @@ class FactorTable(_Table):
     allowed: Pair | None = None
     tolerance: Annotated[Number, Field(gt=0)] | None = None
     settable_step: Annotated[Number, Field(gt=0)] | None = None
+    reading_error: Annotated[Number, Field(ge=0)] | None = None
     scale: Literal["linear", "log"] = "linear"
     levels: Annotated[list[Text], Field(min_length=2)] | None = None
 
@@ -127,6 +130,25 @@ class RegionTable(_Table):
     keep: Literal["explored", "allowed"] | RadiusTable = "explored"
 
 
+class PlanTable(_Table):
+    """``[plan]``: the runs that are to be planned."""
+
+    design: Literal["central composite", "box-behnken", "two-level", "optimal"] = (
+        "central composite"
+    )
+    core: Literal["full", "half", "quarter", "eighth", "sixteenth"] | None = None
+    axial: Literal["rotatable", "spherical", "face", "orthogonal-blocks"] | Positive = "rotatable"
+    shrink: Annotated[Number, Field(gt=0, le=1)] = 1.0
+    centre_runs: Annotated[int, Field(ge=0)] | CountPair | None = None
+    blocks: Annotated[int, Field(ge=1)] = 1
+    replicates: Annotated[int, Field(ge=1)] = 1
+    runs: Annotated[int, Field(ge=1)] | None = None
+    criterion: Literal["D", "I"] = "I"
+    order: Literal[1, 2] = 2
+    error_sd: dict[str, Positive] = Field(default_factory=dict)
+    hold: list[Text] | None = None
+
+
 class BlocksTable(_Table):
     """``[blocks]``."""
 
@@ -153,7 +175,7 @@ class StudyFile(_Table):
     blocks: BlocksTable | None = None
     leave_out: list[LeaveOutTable] = Field(default_factory=list)
     today: dict[str, Number | str] = Field(default_factory=dict)
-    plan: dict[str, Any] = Field(default_factory=dict)
+    plan: PlanTable = PlanTable()
     memo: dict[str, Any] = Field(default_factory=dict)
 
 
@@ -171,6 +193,7 @@ _TABLES: dict[str, type[BaseModel]] = {
     "region.keep": RadiusTable,
     "blocks": BlocksTable,
     "leave_out.*": LeaveOutTable,
+    "plan": PlanTable,
     "": StudyFile,
 }
 
@@ -203,7 +226,7 @@ def place(path: KeyPath, lines: Mapping[KeyPath, int]) -> str:
 
 def _own_path(location: tuple[int | str, ...]) -> KeyPath:
     """Drop what the library adds to a location for the arms of a union."""
-    noise = {"float", "list[constrained-float]", "str", "RadiusTable", "constrained-float"}
+    noise = {"float", "str", "RadiusTable", "constrained-float", "constrained-int"}
     return tuple(
         part
         for part in location
@@ -223,20 +246,35 @@ def _fault(detail: Any, path: KeyPath, lines: Mapping[KeyPath, int]) -> Fault:
         return Fault(f"unknown key '{key}'", where, mend)
     if kind == "missing":
         return Fault(f"key '{key}' is missing", where, f"state '{key}'")
+    shown = str(value) if not isinstance(value, str) else f"'{value}'"
+    if path in _SEVERAL:
+        return Fault(f"'{key}' is {shown[:60]}", where, _SEVERAL[path])
     allowed = _ALLOWED.get(kind, "see the study reference for what may stand here")
     if kind == "literal_error":
         allowed = f"use {limits.get('expected', 'one of the known words')}"
-    elif kind in ("greater_than", "less_than", "greater_than_equal"):
-        bound = limits.get("gt", limits.get("lt", limits.get("ge")))
-        word = {"greater_than": "above", "less_than": "below"}.get(kind, "at least")
+    elif kind in _BOUND_WORDS:
+        key_of_bound, word = _BOUND_WORDS[kind]
+        bound = limits.get(key_of_bound)
         allowed = f"give a number {word} {bound}"
     elif kind in ("too_short", "too_long"):
         count = limits.get("min_length", limits.get("max_length"))
         allowed = f"give {'at least' if kind == 'too_short' else 'at most'} {count} items"
-    shown = str(value) if not isinstance(value, str) else f"'{value}'"
     return Fault(f"'{key}' is {shown[:60]}", where, allowed)
 
 
+_BOUND_WORDS = {
+    "greater_than": ("gt", "above"),
+    "greater_than_equal": ("ge", "at least"),
+    "less_than": ("lt", "below"),
+    "less_than_equal": ("le", "at most"),
+}
+# keys that take values of different kinds
+_SEVERAL: dict[KeyPath, str] = {
+    ("plan", "axial"): "use 'rotatable', 'spherical', 'face', 'orthogonal-blocks' or a number"
+    " above 0",
+    ("plan", "centre_runs"): "give a whole number, or two for the two-level blocks and the axial"
+    " block",
+}
 _ALLOWED = {
     "float_type": "give a number without quotes",
     "int_type": "give a whole number without quotes",

@@ -38,6 +38,7 @@ def factor_record(name: str, table: FactorTable) -> Factor:
         tolerance=table.tolerance,
         settable_step=None if step is None else Decimal(repr(step)),
         scale=table.scale,
+        reading_error=table.reading_error,
     )
 
 

@@ -9,6 +9,7 @@ from decimal import Decimal
 from wideberth.errors import Fault
 from wideberth.study.lines import KeyPath
 from wideberth.study.naming import name_faults, nearest
+from wideberth.study.plan_statement import plan_faults
 from wideberth.study.records import Factor, LeftOut, Response
 from wideberth.study.schema import (
     FactorTable,
@@ -55,6 +56,7 @@ class Statement:
         yield from self._constraint_faults()
         yield from self._leave_out_faults()
         yield from self._today_faults()
+        yield from plan_faults(self.tables, self.at)
 
     def _factor_faults(self, name: str, table: FactorTable) -> Iterator[Fault]:
         where = self.at("factors", name)
@@ -76,7 +78,7 @@ class Statement:
         where = self.at("factors", name)
         stated = [
             k
-            for k in ("low", "high", "allowed", "tolerance", "settable_step")
+            for k in ("low", "high", "allowed", "tolerance", "settable_step", "reading_error")
             if getattr(table, k) is not None
         ]
         if stated:

@@ -60,6 +60,11 @@ goal  = { want = "near", poor = [250, 450], ideal = 350 }
 # sum     = { impeller = 1.0, binder = 2.0 }
 # at_most = 640
 
+# [plan]                    # another design than the one in runs.csv: wideberth plan
+# design   = "central composite"
+# axial    = "face"
+# error_sd = { fines = 0.8 }
+
 # [blocks]                  # when the sheet has a block column
 # future = "recur"
 
@@ -80,7 +85,7 @@ def start_study(directory: Path | str) -> tuple[Path, ...]:
         When the folder cannot be written.
     """
     folder = Path(directory)
-    files = {folder / "study.toml": _STATEMENT, folder / "runs.csv": _sheet()}
+    files = {folder / "study.toml": _STATEMENT, folder / "runs.csv": template_sheet()}
     for path in files:
         if path.exists():
             raise refusal(f"{path.name} is already there", str(folder), "choose an empty folder")
@@ -101,7 +106,7 @@ def start_study(directory: Path | str) -> tuple[Path, ...]:
     return tuple(files)
 
 
-def _sheet() -> str:
+def template_sheet() -> str:
     """Lay out a two-factor central composite design with empty results."""
     corners = [(a, b, "factorial") for a, b in product((250, 450), (40, 80))]
     axial = [(210, 60, "axial"), (490, 60, "axial"), (350, 32, "axial"), (350, 88, "axial")]

@@ -15,24 +15,28 @@ from wideberth.decide.arena import goal_values
 from wideberth.decide.conformance import conformance, setting_sd
 from wideberth.decide.desirability import overall
 from wideberth.decide.judge import predictions, read_setting
+from wideberth.decide.losses import losses
 from wideberth.decide.problem import Mode, Problem, arena
 from wideberth.decide.recommend import solve
 from wideberth.decide.records import Choice
+from wideberth.decide.region import Room
 from wideberth.decide.search import find_best
 from wideberth.fit.draws import Draws, draw_coefficients, why_no_draws
 from wideberth.fit.records import Models, design_map, level_names
 from wideberth.progress import Progress, silent
 from wideberth.quadratic.terms import features
 from wideberth.study.coding import to_actual
-from wideberth.study.records import Finding, Setting
+from wideberth.study.records import Finding, FloatArray, Setting
 from wideberth.surface.explored import factor_ranges
 from wideberth.uncertainty.cloud import Cloud, cloud_of, desirability_at, on_edge
-from wideberth.uncertainty.location import FEWEST, optimum_region
+from wideberth.uncertainty.location import FEWEST, optimum_region, try_settings
 from wideberth.uncertainty.records import Optimism, OptimumRegion, PossibleLoss, Uncertainty
+from wideberth.uncertainty.shortfall import Shortfall, shortfall
 from wideberth.uncertainty.today import against_today
 
 N_DRAWS = 2000
-LEVEL = 0.95
+LEVELS = (0.5, 0.9, 0.95)
+_CROWDED = 0.2
 _FEW_DF = 4
 _FLAT = 1.0 - 1e-8
 _NEARLY_ALL = 0.8
@@ -90,9 +94,11 @@ def assess(
         edge_share=None,
         level_shares={},
         region=None,
+        narrower=(),
         possible_loss=None,
         conformance=None,
         conformance_exact_setting=None,
+        losses=None,
         setting_error_included=bool(setting_sd(problem.study).any()),
         optimism=None,
         today=against_today(problem, choice, None, None),
@@ -109,6 +115,7 @@ def assess(
     exact = conformance(problem, draws, levels, x, np.zeros(len(x)), choice.seed)
     some = cloud.feasible
     optimism = _optimism(problem, choice, draws, cloud)
+    regions = optimum_regions(problem, draws, cloud, mode)
     # a setting that breaks its limits is not compared with settings that hold them
     stands = choice.asked or choice.status in ("met", "provisional", "unreached", "unsupported")
     result = replace(
@@ -117,10 +124,12 @@ def assess(
         feasible_share=float(some.mean()),
         edge_share=float(on_edge(problem.region, cloud.x[some]).mean()) if some.any() else None,
         level_shares=_level_shares(problem, cloud),
-        region=_region(problem, cloud),
+        region=regions[-1] if regions else None,
+        narrower=regions[:-1],
         possible_loss=_possible_loss(problem, choice, draws, cloud) if stands else None,
         conformance=held,
         conformance_exact_setting=exact,
+        losses=losses(problem, draws, levels, x, setting_sd(problem.study), choice.seed),
         optimism=optimism if stands else None,
         today=against_today(problem, choice, draws, optimism),
     )
@@ -154,16 +163,33 @@ def _level_shares(problem: Problem, cloud: Cloud) -> dict[str, float]:
     }
 
 
-def _region(problem: Problem, cloud: Cloud) -> OptimumRegion | None:
-    """Locate the optimum at the levels that most draws prefer."""
+def optimum_regions(
+    problem: Problem, draws: Draws, cloud: Cloud, mode: Mode
+) -> tuple[OptimumRegion, ...]:
+    """Locate the optimum at 50, 90 and 95 %, at the levels that most draws prefer."""
     if not cloud.feasible.any():
-        return None
+        return ()
     chosen = cloud.combination[cloud.feasible]
     most = int(np.bincount(chosen).argmax())
     optima = cloud.x[cloud.feasible & (cloud.combination == most)]
     if len(optima) < FEWEST:
+        return ()
+    test = edge_test(problem, draws, problem.combinations[most], mode, optima)
+    trial = None if test is None else try_settings(problem.region, test, LEVELS[-1])
+    regions = [optimum_region(problem, optima, level, trial) for level in LEVELS]
+    return tuple(region for region in regions if region is not None)
+
+
+def edge_test(
+    problem: Problem, draws: Draws, levels: tuple[int, ...], mode: Mode, optima: FloatArray
+) -> Shortfall | None:
+    """Prepare the shortfall where optima (n, k) crowd on the edge; ``None`` where they do not."""
+    if not problem.goals or on_edge(problem.region, optima).mean() <= _CROWDED:
         return None
-    return optimum_region(problem, optima, LEVEL)
+    nil = np.zeros(len(problem.study.numeric))
+    bare = replace(problem, room=Room(nil, nil), tight=problem.region)
+    best = find_best(arena(bare, levels, mode))
+    return None if best is None else shortfall(problem, draws, levels, mode, best.x)
 
 
 def _possible_loss(

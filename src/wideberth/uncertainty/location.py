@@ -1,12 +1,14 @@
 """The region for the location of the optimum: an ellipsoid around the draws' optima.
 
 Its size is the sample quantile of the draws' own distances, so that it needs no distribution of
-the optima. What it covers was measured by simulation (docs/methods).
+the optima. Where many of them lie on the edge of what may be searched, settings join whose
+studentised shortfall the draws do not contradict. What it covers was measured by simulation
+(docs/methods).
 """
 
 from __future__ import annotations
 
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy.special import ndtri
@@ -20,17 +22,24 @@ from wideberth.quadratic.stack import Stack
 from wideberth.quadratic.terms import n_terms
 from wideberth.study.coding import to_actual
 from wideberth.study.records import BoolArray, FloatArray
-from wideberth.uncertainty.records import OptimumRegion
+from wideberth.uncertainty.records import Joined, OptimumRegion
+from wideberth.uncertainty.shortfall import Shortfall
 
 FEWEST = 40
 """Fewer optima than this say nothing about their spread."""
 _HALF = 0.5
 _FLOOR = 1e-3
 _N_SPREAD = 8192
+_N_TRIED = 512
 
 
-def optimum_region(problem: Problem, optima: FloatArray, level: float) -> OptimumRegion | None:
-    """Build the region from draws' optima (n, k), coded; ``None`` when nothing can move."""
+def optimum_region(
+    problem: Problem, optima: FloatArray, level: float, trial: Trial | None = None
+) -> OptimumRegion | None:
+    """Build the region from draws' optima (n, k), coded; ``None`` when nothing can move.
+
+    With a ``trial`` settings join by their shortfall.
+    """
     region = problem.region
     basis = region.basis
     if not basis.shape[1]:
@@ -47,22 +56,106 @@ def optimum_region(problem: Problem, optima: FloatArray, level: float) -> Optimu
     own_centre = region.origin + basis @ centre
     shape = basis @ ((precision + precision.T) / 2) @ basis.T
     share = _share(spread, own_centre, shape)
-    return OptimumRegion(
+    alone = OptimumRegion(
         level=level,
         determined=share <= _HALF,
         share_of_explored=share,
+        share_of_edge=None,
         ranges=_ranges(problem, own_centre, shape),
         centre=own_centre,
         shape=shape,
+    )
+    return alone if trial is None else _joined(problem, alone, trial)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Trial:
+    """A sample of what may be searched, and of its edge, with the shortfall of each setting.
+
+    Attributes
+    ----------
+    shortfall : Shortfall
+    x : ndarray, shape (n, k)
+        Coded.
+    weight : ndarray, shape (n,)
+        Share of the volume, of the edge for those that lie there.
+    on_edge : ndarray of bool, shape (n,)
+    short : ndarray, shape (n,)
+    """
+
+    shortfall: Shortfall
+    x: FloatArray
+    weight: FloatArray
+    on_edge: BoolArray
+    short: FloatArray
+
+
+def try_settings(region: Region, shortfall: Shortfall, level: float) -> Trial:
+    """Judge a sample of a region by the shortfall, for regions up to ``level``."""
+    spread = evenly_spread(region)
+    every = len(spread[0]) // _N_TRIED
+    inner, weight = spread[0][::every], spread[1][::every]
+    edge, edge_weight = edge_spread(region)
+    x = np.concatenate([inner, edge])
+    return Trial(
+        shortfall=shortfall,
+        x=x,
+        weight=np.concatenate([weight / weight.sum(), edge_weight / edge_weight.sum()]),
+        on_edge=np.arange(len(x)) >= len(inner),
+        short=shortfall.of(x, shortfall.critical(level)),
+    )
+
+
+def _joined(problem: Problem, alone: OptimumRegion, trial: Trial) -> OptimumRegion:
+    """Let settings join a region by their shortfall; shares and ranges from the sample."""
+    joined = Joined(trial.shortfall, trial.shortfall.critical(alone.level))
+    kept = trial.short <= joined.critical
+    own = _size(alone, trial.x) <= 1.0
+    share = alone.share_of_explored + float(trial.weight[kept & ~own & ~trial.on_edge].sum())
+    actual = to_actual(problem.study.numeric, trial.x[kept])
+    ranges = {
+        name: (
+            float(min(low, actual[:, j].min(initial=np.inf))),
+            float(max(high, actual[:, j].max(initial=-np.inf))),
+        )
+        for j, (name, (low, high)) in enumerate(alone.ranges.items())
+    }
+    return replace(
+        alone,
+        determined=share <= _HALF,
+        share_of_explored=min(share, 1.0),
+        share_of_edge=float(trial.weight[(kept | own) & trial.on_edge].sum()),
+        ranges=ranges,
+        joined=joined,
     )
 
 
 def in_region(problem: Problem, region: OptimumRegion, x: FloatArray) -> BoolArray:
     """Tell which coded settings (..., k) may be the optimum; shape (...)."""
-    away = x - region.centre
-    size = np.einsum("...i,ij,...j->...", away, region.shape, away)
-    result: BoolArray = np.asarray(size <= 1.0) & inside(problem.region, x)
+    near: BoolArray = np.asarray(_size(region, x) <= 1.0)
+    if region.joined is not None:
+        joined = region.joined
+        short = joined.shortfall.of(x.reshape(-1, x.shape[-1]), joined.critical)
+        near = near | (short.reshape(x.shape[:-1]) <= joined.critical)
+    result: BoolArray = near & inside(problem.region, x)
     return result
+
+
+def _size(region: OptimumRegion, x: FloatArray) -> FloatArray:
+    away = x - region.centre
+    result: FloatArray = np.einsum("...i,ij,...j->...", away, region.shape, away)
+    return result
+
+
+def edge_spread(region: Region) -> tuple[FloatArray, FloatArray]:
+    """Cover the edge of a region: settings (n, k) with weights (n,), nearly a uniform sample."""
+    r = region.basis.shape[1]
+    points = even_points(_N_TRIED // 2, r)
+    rays = ndtri(0.5 + 0.9999 * (points - 0.5))
+    rays /= np.sqrt((rays * rays).sum(axis=1))[:, None]
+    rays = rays @ region.basis.T
+    reach = region.reach(rays)
+    return region.middle + reach[:, None] * rays, reach ** (r - 1)
 
 
 def evenly_spread(region: Region) -> tuple[FloatArray, FloatArray]:

@@ -6,14 +6,27 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 
 from wideberth.decide.conformance import Conformance
+from wideberth.decide.losses import Losses
 from wideberth.decide.problem import Mode
 from wideberth.decide.records import Prediction
 from wideberth.study.records import Finding, FloatArray, Setting
+from wideberth.uncertainty.shortfall import Shortfall
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Joined:
+    """Settings whose studentised shortfall is at most ``critical`` belong to a region as well."""
+
+    shortfall: Shortfall
+    critical: float
 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class OptimumRegion:
     """Where the true optimum may lie: an ellipsoid around the draws' optima, cut with the region.
+
+    Where the optima crowd on the edge of what may be searched, settings join whose studentised
+    shortfall is small enough.
 
     Attributes
     ----------
@@ -23,18 +36,26 @@ class OptimumRegion:
         where the optimum is.
     share_of_explored : float
         Of the volume that may be searched.
+    share_of_edge : float or None
+        Of the edge of what may be searched; ``None`` where the optima do not crowd there. It has no
+        volume, so that the other share alone would flatter the region.
     ranges : mapping
-        Smallest and largest value of each numeric factor anywhere in the region, own units.
+        Smallest and largest value of each numeric factor anywhere in the region, own units; of
+        settings that joined, among some hundreds tried.
     centre : ndarray, shape (k,); shape : ndarray, shape (k, k)
         Coded: ``(x - centre)' shape (x - centre) <= 1``; nil in directions not spanned.
+    joined : Joined or None
+        What tells which settings join; ``None`` for the ellipsoid alone.
     """
 
     level: float
     determined: bool
     share_of_explored: float
+    share_of_edge: float | None
     ranges: Mapping[str, tuple[float, float]]
     centre: FloatArray
     shape: FloatArray
+    joined: Joined | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -115,12 +136,17 @@ class Uncertainty:
     level_shares : mapping
         For each combination of levels of categorical factors, the share of draws that prefer it.
     region, possible_loss, optimism : records or None
+        The region at 95 %.
+    narrower : tuple of OptimumRegion
+        The same at 50 and 90 %.
     today : Today or None
         The setpoint held against ``[today]``, where that is stated for every factor.
     conformance : Conformance or None
         Setting error included where tolerances are stated; ``None`` without limits.
     conformance_exact_setting : Conformance or None
         As if every batch were run at exactly the setting.
+    losses : Losses or None
+        Where conformance is lost.
     """
 
     draws: int
@@ -131,10 +157,12 @@ class Uncertainty:
     edge_share: float | None
     level_shares: Mapping[str, float]
     region: OptimumRegion | None
+    narrower: tuple[OptimumRegion, ...]
     possible_loss: PossibleLoss | None
     conformance: Conformance | None
     conformance_exact_setting: Conformance | None
     setting_error_included: bool
+    losses: Losses | None
     optimism: Optimism | None
     today: Today | None
     findings: tuple[Finding, ...]

@@ -1,0 +1,1 @@
+"""Planning the runs: designs, their safety, their quality, optimal runs, run sheets, stages."""
