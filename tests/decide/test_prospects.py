@@ -82,7 +82,7 @@ def test_chances_rise_with_the_runs_and_match_plain_simulation(provisional):
 def test_history_is_the_same_problem_with_more_degrees_of_freedom(provisional):
     problem, choice, draws = provisional
     found = prospects(problem, choice, draws)
-    models = tuple(replace(m, df_residual=HISTORY_DF) for m in problem.models.models)
+    models = tuple(replace(m, df_error=HISTORY_DF) for m in problem.models.models)
     anew = build_problem(replace(problem.models, models=models), seed=1, room=True)
     answer = best_answer(anew, "simultaneous")
     assert found.history.proves == (answer is not None)

@@ -275,7 +275,15 @@ def test_blocks_must_be_stated(tmp_path):
     recur = STATEMENT + '\n[blocks]\nfuture = "recur"\n'
     assert read_study(write_study(tmp_path, recur, sheet)).runs.blocks == ("a", "b")
     sample = recur.replace("recur", "sample")
-    assert "not served yet" in _one(write_study(tmp_path, sample, sheet)).what
+    assert read_study(write_study(tmp_path, sample, sheet)).future_blocks == "sample"
+    share = sample.replace("{ high = 10 }", '{ high = 10, guard = "share" }')
+    assert "share of batches" in _one(write_study(tmp_path, share, sheet)).what
+    for future in ("", "recur"):
+        stated = (recur if future else STATEMENT).replace(
+            'unit = "GU"', 'unit = "GU"\nblock_sd = 1'
+        )
+        found = _faults(write_study(tmp_path, stated, sheet if future else SHEET))
+        assert any("the blocks are not a sample" in fault.what for fault in found)
     assert "no block column" in _one(write_study(tmp_path, recur)).what
     gap = sheet.replace("4.1,60,a", "4.1,60,")
     assert "the block is empty" in _one(write_study(tmp_path, recur, gap)).what

@@ -13,11 +13,13 @@ import numpy as np
 from wideberth import __version__
 from wideberth.chain.record import Record
 from wideberth.decide.alternatives import Alternative
+from wideberth.decide.every_run import EveryRun
 from wideberth.decide.frontier import Frontier
 from wideberth.decide.give_ups import GiveUp
 from wideberth.decide.prospects import Prospects
 from wideberth.decide.records import Choice
 from wideberth.errors import Fault
+from wideberth.fit.equations import own_units
 from wideberth.fit.records import Model, Models
 from wideberth.operate.records import Robustness, Window
 from wideberth.plan.plan import offence_faults
@@ -27,7 +29,8 @@ from wideberth.surface.records import Shape
 from wideberth.uncertainty.records import Uncertainty
 
 Json = dict[str, Any]
-NOT_TOLD = ("formula", "joined")
+FORMULAS = ("formula", "derived")
+NOT_TOLD = (*FORMULAS, "joined")
 
 
 def dumps(content: Json) -> str:
@@ -63,7 +66,10 @@ def fit_json(models: Models) -> Json:
     """Give the answer of ``fit``."""
     return {
         **_head("fit", models.study),
-        "responses": {model.response: _model(model) for model in models.models},
+        "responses": {
+            model.response: {**_model(model), **_equations(models.study, model)}
+            for model in models.models
+        },
     }
 
 
@@ -81,11 +87,12 @@ def shape_json(shapes: tuple[Shape, ...], study: Study) -> Json:
     return {**_head("shape", study), "responses": responses}
 
 
-def recommend_json(choice: Choice, study: Study) -> Json:
-    """Give the answer of ``recommend``."""
+def recommend_json(choice: Choice, study: Study, whole: EveryRun | None = None) -> Json:
+    """Give the answer of ``recommend``, beside it the answer with nothing left out."""
     content = _plain(choice)
     head = {**_head("recommend", study), "seed": choice.seed}
-    return {**head, **{key: value for key, value in content.items() if key != "seed"}}
+    answer = {**head, **{key: value for key, value in content.items() if key != "seed"}}
+    return answer if whole is None else {**answer, "with_every_run": _plain(whole)}
 
 
 def give_ups_json(costs: tuple[GiveUp, ...]) -> list[Any]:
@@ -144,7 +151,7 @@ def record_json(record: Record) -> Json:
             for model in record.models.models
         },
         "shape": shape_json(record.shapes, study)["responses"],
-        "recommend": recommend_json(record.choice, study),
+        "recommend": recommend_json(record.choice, study, record.every_run),
         "uncertainty": uncertainty_json(record.uncertainty, study),
         "window": window_json(record.window, study),
         "robustness": robustness_json(record.robustness, study),
@@ -198,6 +205,7 @@ def _model(model: Model) -> Json:
         "order": model.order,
         "n": model.n_runs,
         "df_residual": model.df_residual,
+        "df_error": model.df_error,
         "coefficients": [_plain(term) for term in model.table],
         "s": model.s,
         "r2": model.r2,
@@ -206,6 +214,8 @@ def _model(model: Model) -> Json:
         "r2_press": model.r2_press,
         "lack_of_fit": None,
         "noise_free": model.noise_free,
+        "anova": [_plain(part) for part in model.anova],
+        "checks": [_plain(check) for check in model.checks],
         "runs": [_plain(run) for run in model.runs],
         "findings": [asdict(finding) for finding in model.findings],
         "grade": model.grade,
@@ -213,7 +223,19 @@ def _model(model: Model) -> Json:
     }
     if model.lack_of_fit is not None:
         content["lack_of_fit"] = _plain(model.lack_of_fit)
+    if model.left_out:
+        content["left_out"] = [_plain(run) for run in model.left_out]
+    if model.between is not None:
+        between = _plain(model.between)
+        del between["covariance_within"]
+        content["between_blocks"] = between
+    if model.pooled is not None:
+        content["pooled"] = _plain(model.pooled)
     return content
+
+
+def _equations(study: Study, model: Model) -> Json:
+    return {"own_units": [_plain(equation) for equation in own_units(study, model)]}
 
 
 def _covariance(model: Model) -> Json:
@@ -228,11 +250,12 @@ def study_json(study: Study) -> Json:
         if field.name not in ("directory", "sha256")
     }
     for stated, response in zip(content["responses"], study.responses, strict=True):
-        if response.formula is not None:
-            stated["formula"] = {
-                "*".join(names) or "constant": number
-                for names, number in response.formula.terms.items()
-            }
+        for key in FORMULAS:
+            formula = getattr(response, key)
+            if formula is not None:
+                stated[key] = {
+                    "*".join(names) or "constant": number for names, number in formula.terms.items()
+                }
     return content
 
 

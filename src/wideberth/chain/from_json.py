@@ -12,7 +12,7 @@ from typing import Any, Literal, Union, get_args, get_origin, get_type_hints
 
 import numpy as np
 
-from wideberth.chain.as_json import Json
+from wideberth.chain.as_json import FORMULAS, Json
 from wideberth.errors import Fault, InputError
 from wideberth.study.records import Formula, Study
 
@@ -115,7 +115,7 @@ def _built_record(kind: Any, value: Any) -> Any:
         return Formula({_names(term): number for term, number in value.items()})
     hints = get_type_hints(kind)
     # a formula is written only where there is one
-    odd = (set(value) ^ {field.name for field in fields(kind)}) - {"formula"}
+    odd = (set(value) ^ {field.name for field in fields(kind)}) - set(FORMULAS)
     if odd:
         message = f"'{min(odd)}' of {kind.__name__} is missing or unknown"
         raise ValueError(message)

@@ -9,6 +9,7 @@ from importlib.metadata import version as package_version
 
 from wideberth import __version__
 from wideberth.decide.alternatives import Alternative, alternatives
+from wideberth.decide.every_run import EveryRun, with_every_run
 from wideberth.decide.frontier import Frontier, trade_off
 from wideberth.decide.give_ups import GiveUp, give_ups
 from wideberth.decide.maps import factor_maps
@@ -55,6 +56,8 @@ class Record:
         The trade-off between several goals, where the answer is ``met``.
     priorities : Priorities or None
         How far each priority may move before the setpoint leaves its tolerance.
+    every_run : EveryRun or None
+        The answer with nothing left out, where runs are left out.
     alternatives : tuple of Alternative
         What other aims would name.
     prospects : Prospects
@@ -82,6 +85,7 @@ class Record:
     priorities: Priorities | None
     alternatives: tuple[Alternative, ...]
     prospects: Prospects
+    every_run: EveryRun | None = None
 
 
 def build_record(
@@ -106,6 +110,7 @@ def build_record(
     shapes = shape(models) if study.numeric else ()
     progress("recommend", 0.2)
     problem, choice = solve(models, seed=seed)
+    whole = with_every_run(models, choice)
     draws = draws_for(problem, choice, n_draws)
     progress("give-ups", 0.25)
     costs = give_ups(problem, choice)
@@ -149,6 +154,7 @@ def build_record(
         give_ups=costs,
         frontier=traded,
         priorities=swayed,
+        every_run=whole,
         alternatives=others,
         prospects=hopes,
     )

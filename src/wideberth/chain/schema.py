@@ -15,7 +15,7 @@ from typing import Any, Literal, Union, get_args, get_origin, get_type_hints
 
 import numpy as np
 
-from wideberth.chain.as_json import NOT_TOLD, Json
+from wideberth.chain.as_json import FORMULAS, NOT_TOLD, Json
 from wideberth.decide.alternatives import Alternative
 from wideberth.decide.frontier import Frontier
 from wideberth.decide.give_ups import GiveUp
@@ -191,9 +191,10 @@ def _object_of(kind: Any, defs: Json, left_out: tuple[str, ...] = ()) -> Json:
     made = _object(
         {name: _schema(hints[name], defs) for name in names}, kind.__doc__.strip().splitlines()[0]
     )
-    if "formula" in hints:
-        terms = {"type": "object", "additionalProperties": {"type": "number"}}
-        made["properties"]["formula"] = terms
+    for name in FORMULAS:
+        if name in hints:
+            terms = {"type": "object", "additionalProperties": {"type": "number"}}
+            made["properties"][name] = terms
     return made
 
 

@@ -67,38 +67,41 @@ def command(
     )
     from wideberth.cli.progress import ProgressLine
     from wideberth.decide.alternatives import alternatives
+    from wideberth.decide.every_run import with_every_run
     from wideberth.decide.give_ups import give_ups
     from wideberth.decide.prospects import prospects
     from wideberth.decide.recommend import solve
     from wideberth.fit.models import fit
     from wideberth.report.give_up_words import give_up_sentence
+    from wideberth.report.left_out_words import every_run_sentences
     from wideberth.report.prospect_words import prospect_sentences
     from wideberth.study.reading import read_study
     from wideberth.uncertainty.assess import draws_for
 
     study = read_study(study_dir)
     progress = ProgressLine(quiet=quiet or as_json)
-    setting = read_at(study, at)
-    problem, choice = solve(
-        fit(study),
-        seed=seed,
-        at=setting,
-        fix=read_at(study, fix, "--fix"),
-        room=room == "stated",
-        progress=progress,
-    )
+    setting, fixed = read_at(study, at), read_at(study, fix, "--fix")
+    models, kept = fit(study), room == "stated"
+    problem, choice = solve(models, seed=seed, at=setting, fix=fixed, room=kept, progress=progress)
+    whole = with_every_run(models, choice, fix=fixed, room=kept, progress=progress)
     found = give_ups(problem, choice, progress=progress) if costs else ()
     draws = draws_for(problem, choice)
     hopes = prospects(problem, choice, draws, progress=progress)
     others = alternatives(problem, choice, draws, progress=progress) if aims else ()
     progress.close()
     if as_json:
-        content = {**recommend_json(choice, study), "prospects": prospects_json(hopes)}
+        content = {**recommend_json(choice, study, whole), "prospects": prospects_json(hopes)}
         content |= {"give_ups": give_ups_json(found)} if costs else {}
         content |= {"alternatives": alternatives_json(others)} if aims else {}
         click.echo(dumps(content), nl=False)
     else:
         print_choice(choice, study)
+        if study.left_out:
+            click.echo("\nLeft out of the fit")
+        for stated in study.left_out:
+            click.echo(f"  {stated.words()}")
+        for sentence in every_run_sentences(whole, choice, study) if whole else ():
+            click.echo(f"  {sentence}")
         for sentence in prospect_sentences(hopes, choice, study):
             click.echo(sentence)
         if aims:

@@ -44,6 +44,12 @@ def confirmation_runs(
     guarded = [side for side in problem.sides if problem.guarding[side.response].smooth is not None]
     if not guarded:
         return None
+    if _of_new_blocks(problem, guarded):
+        return Confirmation(
+            None,
+            "confirmation runs must come from several new blocks, one run in each; how many would"
+            " prove the limits is not computed where blocks are a sample",
+        )
     for n_runs in range(1, MOST_RUNS + 1):
         if all(_expected(problem, side, levels, x, n_runs) for side in guarded):
             runs = "run" if n_runs == 1 else "runs"
@@ -58,6 +64,11 @@ def confirmation_runs(
     )
 
 
+def _of_new_blocks(problem: Problem, guarded: list[LimitSide]) -> bool:
+    """Tell whether a future batch of a guarded response comes from a block not yet run."""
+    return any(problem.models[side.response].between is not None for side in guarded)
+
+
 def chances_of_proof(
     problem: Problem, draws: Draws, levels: tuple[int, ...], x: FloatArray, seed: int
 ) -> tuple[Chance, ...]:
@@ -65,10 +76,10 @@ def chances_of_proof(
 
     Each draw is a truth that the runs so far allow: new runs are made from it, and judged by their
     own bound with the standard deviation pooled from the model and them. Where blocks recur, by
-    the worst one.
+    the worst one; where they are a sample, nothing is said.
     """
     guarded = [side for side in problem.sides if problem.guarding[side.response].smooth is not None]
-    if not guarded:
+    if not guarded or _of_new_blocks(problem, guarded):
         return ()
     random = stream(seed, "confirmation runs", 0)
     z = random.standard_normal((draws.n_draws, max(CHANCES_OF), len(draws.varying)))
@@ -123,12 +134,13 @@ def confirmation_ranges(
 ) -> dict[str, ConfirmationRange]:
     """Predict one run and the mean of three at a coded setting (k,), for responses with noise.
 
-    Two-sided prediction intervals, all responses together with 95 % after Bonferroni.
+    Two-sided prediction intervals, all responses together with 95 % after Bonferroni; where
+    blocks are a sample, of runs in new blocks, one in each.
     """
-    noisy = [m for m in problem.models.models if not m.exact and m.s and m.df_residual]
+    noisy = [m for m in problem.models.models if not m.exact and m.s and m.df_error]
+    confidence = 1.0 - 0.05 / (2 * max(len(noisy), 1))
     result = {}
     for model in noisy:
-        t = float(stdtrit(model.df_residual, 1.0 - 0.05 / (2 * len(noisy))))
         ends = {}
         for n_runs in (1, 3):
             lows, highs = [], []
@@ -137,7 +149,10 @@ def confirmation_ranges(
                 terms = features(x)
                 mean = float(terms @ at.coefficients)
                 leverage = float(terms @ at.covariance @ terms)
-                half = t * at.s * float(np.sqrt(leverage + 1.0 / n_runs))
+                variance = leverage + 1.0 / n_runs
+                df = float(model.degrees(variance, 1.0 / n_runs, confidence))
+                t = float(stdtrit(df, confidence))
+                half = t * at.s * float(np.sqrt(variance))
                 lows.append(mean - half)
                 highs.append(mean + half)
             ends[n_runs] = (min(lows), max(highs))

@@ -119,7 +119,8 @@ def _at_worst_block(
 def limit_blocks(problem: Problem) -> tuple[int | None, ...]:
     """Give the blocks at which limits are judged: each that recurs, or none at all."""
     limited = [problem.models[side.response] for side in problem.sides]
-    if any(term.block is not None for model in limited for term in model.terms):
+    recur = problem.study.future_blocks != "sample"
+    if recur and any(term.block is not None for model in limited for term in model.terms):
         return tuple(range(len(problem.study.runs.blocks)))
     return (None,)
 

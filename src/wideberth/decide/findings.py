@@ -8,9 +8,13 @@ from wideberth.decide.problem import Problem
 from wideberth.decide.region import inside
 from wideberth.fit.records import Model, level_names, surface
 from wideberth.quadratic.terms import features
+from wideberth.study.coding import to_coded
 from wideberth.study.records import Finding, FloatArray, Setting
+from wideberth.study.resets import seldom_reset
 from wideberth.surface.explored import contains
 
+_NEAR = 0.5
+"""How near a failed run must lie in every factor, coded, beyond the room, to be named."""
 _ORDER = {"do not use": 0, "look": 1, "fine": 2}
 
 
@@ -43,6 +47,9 @@ def choice_findings(
         for finding in model.findings
         if finding.grade != "fine"
     ]
+    found += [Finding("look", one.words()) for one in problem.study.left_out]
+    found += seldom_reset(problem.study)
+    found += _failed_near(problem, levels, x)
     found += _where(problem, x, asked=asked)
     found += _how_far_known(problem, levels, x)
     found += _ties(equals)
@@ -60,6 +67,22 @@ def choice_findings(
 
 def _used(problem: Problem) -> set[str]:
     return {goal.response for goal in problem.goals} | {side.response for side in problem.sides}
+
+
+def _failed_near(problem: Problem, levels: tuple[int, ...], x: FloatArray) -> list[Finding]:
+    """Warn of runs that failed at the setting's levels and near it in every numeric factor."""
+    study = problem.study
+    runs = study.runs
+    away = np.abs(to_coded(study.numeric, runs.numeric_actual) - x)
+    near = (away <= _NEAR + np.maximum(problem.room.below, problem.room.above)).all(axis=1)
+    near &= (runs.levels == np.array(levels, dtype=np.int64)).all(axis=1)
+    found = []
+    for i in np.flatnonzero(near):
+        if runs.kind[i] == "failed":
+            why = f": {runs.note[i]}" if runs.note[i] else ""
+            text = f"The run in row {runs.rows[i]} failed near this setting{why}."
+            found.append(Finding("look", text))
+    return found
 
 
 def _where(problem: Problem, x: FloatArray, *, asked: bool) -> list[Finding]:

@@ -35,8 +35,8 @@ class Guard:
     Attributes
     ----------
     kind : GuardKind
-    df : int
-        Residual degrees of freedom; unused for ``none``.
+    df : float
+        Degrees of freedom of the estimated variance; unused for ``none``.
     confidence : float
         One-sided, after the risk of several ``share`` limits was split.
     share : float
@@ -44,7 +44,7 @@ class Guard:
     """
 
     kind: GuardKind
-    df: int
+    df: float
     confidence: float
     share: float
 

@@ -83,8 +83,8 @@ def predictions(problem: Problem, levels: tuple[int, ...], x: FloatArray) -> dic
         result[model.response] = Prediction(
             unit=model.unit,
             mean=mean,
-            mean_interval=_interval(model, mean, float(terms @ at.covariance @ terms)),
-            batch_interval=_interval(model, mean, 1.0 + float(terms @ at.covariance @ terms)),
+            mean_interval=_interval(model, mean, float(terms @ at.covariance @ terms), 0.0),
+            batch_interval=_interval(model, mean, float(terms @ at.covariance @ terms), 1.0),
             desirability=None if goal is None else float(desirability(goal, np.array(mean))),
         )
     return result
@@ -198,12 +198,17 @@ def factor_surroundings(problem: Problem, x: FloatArray | None) -> Mapping[str, 
     return surroundings
 
 
-def _interval(model: Model, mean: float, variance: float) -> tuple[float, float] | None:
+def _interval(
+    model: Model, mean: float, leverage: float, extra: float
+) -> tuple[float, float] | None:
+    """Give the two-sided 95 % interval of a mean (``extra`` 0) or of one batch (1)."""
     if model.exact or model.noise_free:
         return mean, mean
-    if model.s is None or model.df_residual == 0:
+    if model.s is None or model.df_error == 0:
         return None
-    half = float(stdtrit(model.df_residual, _TWO_SIDED)) * model.s * float(np.sqrt(variance))
+    variance = leverage + extra
+    df = float(model.degrees(variance, extra, _TWO_SIDED))
+    half = float(stdtrit(df, _TWO_SIDED)) * model.s * float(np.sqrt(variance))
     return mean - half, mean + half
 
 

@@ -176,7 +176,8 @@ def _limit_sides(study: Study) -> tuple[LimitSide, ...]:
 
 def judged_blocks(model: Model, study: Study) -> tuple[int | None, ...]:
     """Give the blocks at which a limit must hold: each one that recurs, or none at all."""
-    if any(term.block is not None for term in model.terms):
+    recur = study.future_blocks != "sample"
+    if recur and any(term.block is not None for term in model.terms):
         return tuple(range(len(study.runs.blocks)))
     return (None,)
 
@@ -248,7 +249,7 @@ def _guarding(models: Models, response: Response, bare: tuple[Arena, ...], seed:
         raise ValueError(message)
     guard = Guard(
         limit.guard,
-        model.df_residual,
+        model.df_error,
         split_confidence(study, limit.confidence, limit.guard),
         limit.share,
     )
@@ -260,7 +261,7 @@ def _guarding(models: Models, response: Response, bare: tuple[Arena, ...], seed:
         scale = (best - worst) / 100 or max(abs(limit.low or 0.0), abs(limit.high or 0.0)) or 1.0
     needs_df = limit.guard != "none" and not model.exact and not model.noise_free
     if not needs_df or s == 0:
-        possible = not (needs_df and model.df_residual == 0)
+        possible = not (needs_df and model.df_error == 0)
         return Guarding(guard, None, 1.0, scale, s > 0, possible)
     maps = tuple(
         design_map(model, study, levels=where.levels, block=block)
@@ -272,6 +273,10 @@ def _guarding(models: Models, response: Response, bare: tuple[Arena, ...], seed:
     leverages = np.stack(
         [np.einsum("np,pq,nq->n", terms @ m, model.covariance, terms @ m) for m in maps]
     )
+    # the fewest degrees of freedom anywhere, so that the guard is too wide elsewhere, never narrow
+    extra = 0.0 if guard.kind == "mean" else 1.0
+    degrees = model.degrees(leverages + extra, extra, guard.confidence)
+    guard = replace(guard, df=float(degrees.min()))
     smooth = SmoothGuard.between(guard, float(leverages.min()), float(leverages.max()))
     factor = 1.0
     if limit.point == "chosen":

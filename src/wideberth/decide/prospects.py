@@ -21,7 +21,7 @@ from wideberth.decide.problem import Problem, arena, build_problem
 from wideberth.decide.records import Choice, Confirmation
 from wideberth.decide.search import seek
 from wideberth.fit.draws import Draws
-from wideberth.fit.records import Models, surface
+from wideberth.fit.records import Model, Models, surface
 from wideberth.progress import Progress, silent
 from wideberth.quadratic.terms import features
 from wideberth.study.records import Setting
@@ -174,10 +174,7 @@ def _history(problem: Problem, seed: int) -> History | None:
     guards = [g for g in problem.guarding.values() if g.smooth is not None]
     if all(g.guard.df >= HISTORY_DF for g in guards):
         return None
-    models = tuple(
-        replace(model, df_residual=max(model.df_residual, HISTORY_DF)) if model.s else model
-        for model in problem.models.models
-    )
+    models = tuple(_with_history(model) if model.s else model for model in problem.models.models)
     anew = _guarded_anew(problem, replace(problem.models, models=models), seed)
     answer = best_answer(anew, "simultaneous")
     if answer is None:
@@ -188,6 +185,12 @@ def _history(problem: Problem, seed: int) -> History | None:
         setpoint=own_setting(problem.study, answer.levels, answer.settable.x),
         desirability=_score(problem, answer),
     )
+
+
+def _with_history(model: Model) -> Model:
+    df, between = max(model.df_error, HISTORY_DF), model.between
+    within = None if between is None else replace(between, df_within=df)
+    return replace(model, df_error=df, between=within)
 
 
 def _guarded_anew(problem: Problem, models: Models, seed: int) -> Problem:

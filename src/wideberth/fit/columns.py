@@ -52,6 +52,24 @@ def model_terms(study: Study, order: int, blocks: IntArray) -> tuple[Term, ...]:
     return tuple(terms)
 
 
+def stated_terms(
+    study: Study, stated: tuple[tuple[str, ...], ...], blocks: IntArray
+) -> tuple[Term, ...]:
+    """Keep of a second-order model the constant, the blocks, and the terms that are stated.
+
+    ``stated`` holds the sorted names that each term multiplies.
+    """
+    numeric = tuple(factor.name for factor in study.numeric)
+    kept = []
+    for term in model_terms(study, 2, blocks):
+        names = [numeric[j] for j in product_factors(term.monomial, len(numeric))]
+        if term.contrast is not None:
+            names.append(study.categorical[term.contrast[0]].name)
+        if not names or tuple(sorted(names)) in stated:
+            kept.append(term)
+    return tuple(kept)
+
+
 def degree(term: Term, n_factors: int) -> int:
     """Give a term's degree, counting a categorical contrast as one."""
     numeric = 0 if term.monomial == 0 else 1 if term.monomial <= n_factors else 2

@@ -21,7 +21,9 @@ from dataclasses import dataclass
 import numpy as np
 from scipy.special import gammainc, gammaincinv
 
+from wideberth.fit.block_draws import add_average_block, block_root, root_of_sum
 from wideberth.fit.columns import model_matrix
+from wideberth.fit.covariance import inverse_wishart_root, root_of_correlation
 from wideberth.fit.models import rows_fitted
 from wideberth.fit.records import Model, Models
 from wideberth.seeds import stream
@@ -101,18 +103,24 @@ def draw_coefficients(models: Models, n_draws: int, seed: int) -> Draws:
     if not varying:
         return Draws(names, (), np.zeros((n_draws, 0, 0)))
     residuals, projections, rows = _residuals_and_projections(models, varying)
-    root = _root_of_correlation(residuals)
-    least = min(model.df_residual for model in varying)
+    root = root_of_correlation(residuals)
+    least = min(model.df_error for model in varying)
     coefficients: list[list[FloatArray]] = [[] for _ in varying]
     noise = []
     for block in range(-(-n_draws // BLOCK)):
         random = stream(seed, "draws of coefficients", block)
-        mixed = _scaled(_inverse_wishart_root(random, root, least), varying, least)
+        mixed = _scaled(inverse_wishart_root(random, root, least, BLOCK), varying, least)
         errors = random.standard_normal((BLOCK, len(residuals), len(varying)))
         errors = errors @ mixed.transpose(0, 2, 1)
+        moved = [errors[:, rows[j], j] @ projections[j].T for j in range(len(varying))]
+        if any(model.between is not None for model in varying):
+            blocks = block_root(random, mixed, varying)
+            shift = (blocks @ random.standard_normal((BLOCK, len(varying), 1)))[..., 0]
+            for j, model in enumerate(varying):
+                add_average_block(moved[j], shift[:, j], model)
+            mixed = root_of_sum(mixed, blocks)
         for j, model in enumerate(varying):
-            moved = errors[:, rows[j], j] @ projections[j].T
-            coefficients[j].append(model.coefficients + moved)
+            coefficients[j].append(model.coefficients + moved[j])
         noise.append(mixed)
     return Draws(
         names,
@@ -124,7 +132,10 @@ def draw_coefficients(models: Models, n_draws: int, seed: int) -> Draws:
 def _residuals_and_projections(
     models: Models, varying: tuple[Model, ...]
 ) -> tuple[FloatArray, list[FloatArray], list[IntArray]]:
-    """Give residuals (n, m), not-a-number where a run is missing, and each (X'X)^-1 X'."""
+    """Give residuals (n, m), not-a-number where a run is missing, and each (X'WX)^-1 X'W^1/2.
+
+    Residuals carry the root of their weight, so that all have the variance of one batch.
+    """
     study = models.study
     responses = {response.name: response for response in study.responses}
     used = [rows_fitted(study, responses[model.response]) for model in varying]
@@ -134,41 +145,10 @@ def _residuals_and_projections(
     for j, (model, rows) in enumerate(zip(varying, used, strict=True)):
         matrix = model_matrix(study, model.terms, rows)
         places.append(np.searchsorted(every, rows).astype(np.int64))
-        residuals[places[j], j] = [run.residual for run in model.runs]
-        projections.append(model.covariance @ matrix.T)
+        root = np.sqrt([run.weight for run in model.runs])
+        residuals[places[j], j] = root * [run.residual for run in model.runs]
+        projections.append(_within(model)[1] @ (matrix * root[:, None]).T)
     return residuals, projections, places
-
-
-def _root_of_correlation(residuals: FloatArray) -> FloatArray:
-    """Correlate residuals pair by pair over common runs, repair to a covariance; (m, m) root."""
-    m = residuals.shape[1]
-    correlation: FloatArray = np.eye(m)
-    for a in range(m):
-        for b in range(a):
-            both = np.isfinite(residuals[:, a]) & np.isfinite(residuals[:, b])
-            first, second = residuals[both, a], residuals[both, b]
-            size = np.sqrt((first @ first) * (second @ second))
-            correlation[a, b] = correlation[b, a] = first @ second / size if size > 0 else 0.0
-    values, vectors = np.linalg.eigh(correlation)
-    root: FloatArray = vectors * np.sqrt(np.maximum(values, 0.0))
-    length = np.sqrt(np.square(root).sum(axis=1, keepdims=True))
-    result: FloatArray = root / length
-    return result
-
-
-def _inverse_wishart_root(random: np.random.Generator, root: FloatArray, df: int) -> FloatArray:
-    """Draw roots of inverse Wishart matrices around ``root root'``; shape (BLOCK, m, m).
-
-    The scale is such that each diagonal element is one over a chi-square with ``df``.
-    """
-    m = len(root)
-    lower = np.zeros((BLOCK, m, m))
-    for i in range(m):
-        lower[:, i, i] = np.sqrt(random.chisquare(df + m - 1 - i, BLOCK))
-        lower[:, i, :i] = random.standard_normal((BLOCK, i))
-    solved = np.linalg.solve(lower, np.broadcast_to(root.T, lower.shape))
-    result: FloatArray = solved.astype(np.float64).transpose(0, 2, 1)
-    return result
 
 
 def _scaled(mixed: FloatArray, varying: tuple[Model, ...], least: int) -> FloatArray:
@@ -177,9 +157,16 @@ def _scaled(mixed: FloatArray, varying: tuple[Model, ...], least: int) -> FloatA
     for j, model in enumerate(varying):
         size = np.sqrt((mixed[:, j] ** 2).sum(axis=1))
         chi_square = 1.0 / size**2
-        if model.df_residual != least:
+        if model.df_error != least:
             level = gammainc(least / 2, chi_square / 2)
-            chi_square = 2 * gammaincinv(model.df_residual / 2, level)
-        sd = (model.s or 0.0) * np.sqrt(model.df_residual / chi_square)
+            chi_square = 2 * gammaincinv(model.df_error / 2, level)
+        sd = _within(model)[0] * np.sqrt(model.df_error / chi_square)
         scaled[:, j] *= (sd / size)[:, None]
     return scaled
+
+
+def _within(model: Model) -> tuple[float, FloatArray]:
+    """Give the standard deviation within blocks, and the unscaled covariance in its units."""
+    if model.between is None:
+        return model.s or 0.0, model.covariance
+    return model.between.s_within, model.between.covariance_within

@@ -10,7 +10,8 @@ from __future__ import annotations
 import numpy as np
 from scipy.special import stdtrit
 
-from wideberth.fit.records import Model
+from wideberth.fit.records import LackOfFit, Model
+from wideberth.fit.wording import with_unit
 from wideberth.study.records import Finding, FloatArray, Grade, Limit, Response
 
 _SIGNIFICANT = 0.05
@@ -35,22 +36,24 @@ def findings_of(model: Model, response: Response, y: FloatArray) -> tuple[Findin
         text = f"{name}: the model describes the runs exactly; there is no noise to judge it by."
         return (Finding("look", text, name),)
     found = [*_fit_itself(model), *_lack(model, response.limit, y), *_runs(model)]
-    if not found:
+    found += [Finding(c.grade, c.text, name) for c in model.checks if c.grade != "fine"]
+    if not found and model.df_residual > 0:
         found.append(_summary(model))
     return tuple(found)
 
 
 def _summary(model: Model) -> Finding:
+    s = model.s if model.between is None else model.between.s_within
     text = (
         f"{model.response}: the model describes the runs (adjusted R2 {model.r2_adjusted:.2f},"
-        f" PRESS R2 {model.r2_press:.2f}, s {with_unit(model.s or 0.0, model.unit)})."
+        f" PRESS R2 {model.r2_press:.2f}, s {with_unit(s or 0.0, model.unit)})."
     )
     return Finding("fine", text, model.response)
 
 
 def _fit_itself(model: Model) -> list[Finding]:
     name = model.response
-    if model.df_residual == 0:
+    if model.df_error == 0:
         text = (
             f"{name}: as many terms as runs; the noise cannot be estimated, and no guard but"
             " 'none' can be computed."
@@ -69,9 +72,9 @@ def _fit_itself(model: Model) -> list[Finding]:
             f" adjusted R2 {model.r2_adjusted:.2f})."
         )
         found.append(Finding("look", text, name))
-    if model.df_residual < _FEW_DF:
+    if model.df_error < _FEW_DF:
         text = (
-            f"{name}: only {model.df_residual} residual degrees of freedom; s and every guard are"
+            f"{name}: only {model.df_error} residual degrees of freedom; s and every guard are"
             " poorly known."
         )
         found.append(Finding("look", text, name))
@@ -80,9 +83,11 @@ def _fit_itself(model: Model) -> list[Finding]:
 
 def _lack(model: Model, limit: Limit | None, y: FloatArray) -> list[Finding]:
     lack = model.lack_of_fit
-    if lack is None or lack.p >= _SIGNIFICANT:
+    if lack is None:
         return []
     name = model.response
+    if lack.p >= _SIGNIFICANT:
+        return _could_be_missed(model, lack, limit, float(y.mean()))
     text = (
         f"{name}: the model misses more than repeated runs explain (lack of fit F {lack.f:.3g} on"
         f" {lack.df[0]} and {lack.df[1]}, p {lack.p:.2g}),"
@@ -93,6 +98,22 @@ def _lack(model: Model, limit: Limit | None, y: FloatArray) -> list[Finding]:
         text += f", as much as the mean lies from its limit ({with_unit(distance, model.unit)})."
         return [Finding("do not use", text, name)]
     return [Finding("look", text + ".", name)]
+
+
+def _could_be_missed(
+    model: Model, lack: LackOfFit, limit: Limit | None, mean: float
+) -> list[Finding]:
+    """Say where the repeated runs are too few to show a misfit that would matter."""
+    distance = _distance_to_limit(limit, mean)
+    if distance is None or lack.found_size < distance:
+        return []
+    text = (
+        f"{model.response}: no lack of fit is shown, but repeated runs with {lack.df[1]} degrees of"
+        " freedom find one in 4 of 5 studies only from"
+        f" {with_unit(lack.found_size, model.unit)} on, more than the mean lies from its limit"
+        f" ({with_unit(distance, model.unit)})."
+    )
+    return [Finding("look", text, model.response)]
 
 
 def _distance_to_limit(limit: Limit | None, mean: float) -> float | None:
@@ -120,9 +141,3 @@ def _runs(model: Model) -> list[Finding]:
         text = f"{name}: nothing checks the run in row {', '.join(alone)} (leverage 1)."
         found.append(Finding("look", text, name))
     return found
-
-
-def with_unit(value: float, unit: str) -> str:
-    """Write a number to three or four digits with its unit."""
-    written = f"{value:.0f}" if abs(value) >= 1000 else f"{value:.3g}"
-    return f"{written} {unit}".rstrip()

@@ -6,7 +6,7 @@ Replicates are runs at the same settings and levels in the same block.
 from __future__ import annotations
 
 import numpy as np
-from scipy.special import fdtrc
+from scipy.special import fdtrc, fdtri, ncfdtrinc
 
 from wideberth.fit.least_squares import LeastSquares
 from wideberth.fit.records import LackOfFit
@@ -14,6 +14,8 @@ from wideberth.study.coding import to_coded
 from wideberth.study.records import FloatArray, IntArray, Study
 
 _SAME = 9
+_SIZE = 0.05
+_POWER = 0.8
 
 
 def replicate_groups(study: Study, rows: IntArray) -> IntArray:
@@ -41,10 +43,11 @@ def lack_of_fit(fit: LeastSquares, y: FloatArray, groups: IntArray) -> tuple[Lac
         return None, "no run was repeated at the same settings"
     if df_lack <= 0:
         return None, "there are no more different settings than terms"
-    means = np.bincount(groups, weights=y) / np.bincount(groups)
-    ss_pure = float(((y - means[groups]) ** 2).sum())
+    w = fit.weight
+    means = np.bincount(groups, weights=w * y) / np.bincount(groups, weights=w)
+    ss_pure = float(w @ (y - means[groups]) ** 2)
     ss_lack = max(fit.rss - ss_pure, 0.0)
-    if ss_pure <= 1e-20 * float((y**2).sum()):
+    if ss_pure <= 1e-20 * float(w @ y**2):
         return None, "repeated runs agree exactly, so they show no noise to test against"
     ms_lack, ms_pure = ss_lack / df_lack, ss_pure / df_pure
     f = ms_lack / ms_pure
@@ -55,4 +58,12 @@ def lack_of_fit(fit: LeastSquares, y: FloatArray, groups: IntArray) -> tuple[Lac
         ss_lack=ss_lack,
         ss_pure=ss_pure,
         rms_size=float(np.sqrt(max(ms_lack - ms_pure, 0.0))),
+        found_size=_found_size(df_lack, df_pure, float(np.sqrt(ms_pure))),
     ), ""
+
+
+def _found_size(df_lack: int, df_pure: int, sd: float) -> float:
+    """Give the misfit that the test at 5 % finds with a power of 80 %, in the unit of ``sd``."""
+    critical = float(fdtri(df_lack, df_pure, 1.0 - _SIZE))
+    noncentrality = float(ncfdtrinc(df_lack, df_pure, 1.0 - _POWER, critical))
+    return sd * float(np.sqrt(noncentrality / df_lack))

@@ -1,5 +1,6 @@
-"""Ordinary least squares by QR, with everything that is read off one fit.
+"""Weighted least squares by QR, with everything that is read off one fit.
 
+A run of weight w has the variance of one batch over w; without weights every run has weight 1.
 Columns are scaled to unit length before the decomposition, so that badly scaled columns cost no
 digits.
 
@@ -30,12 +31,16 @@ class LeastSquares:
     ----------
     coefficients : ndarray, shape (q,)
     covariance : ndarray, shape (q, q)
-        Unscaled: (X'X)^-1.
+        Unscaled: (X'WX)^-1.
     fitted, residuals, leverage : ndarray, shape (n,)
+        Residuals in the unit of y; leverages of the weighted fit.
+    weight : ndarray, shape (n,)
+    basis : ndarray, shape (n, q)
+        Orthonormal basis of the weighted columns.
     df : int
         n - q.
     rss : float
-        Residual sum of squares.
+        Weighted residual sum of squares.
     """
 
     coefficients: FloatArray
@@ -43,17 +48,30 @@ class LeastSquares:
     fitted: FloatArray
     residuals: FloatArray
     leverage: FloatArray
+    weight: FloatArray
+    basis: FloatArray
     df: int
     rss: float
 
+    @property
+    def weighted_residuals(self) -> FloatArray:
+        """Residuals times the root of the weight, all of one variance; shape (n,)."""
+        result: FloatArray = np.sqrt(self.weight) * self.residuals
+        return result
 
-def least_squares(matrix: FloatArray, y: FloatArray) -> LeastSquares:
-    """Fit y, shape (n,), on a matrix of full column rank, shape (n, q)."""
-    length = np.sqrt((matrix**2).sum(axis=0))
-    q_factor, r_factor = np.linalg.qr(matrix / length)
-    scaled = solve_triangular(r_factor, q_factor.T @ y)
+
+def least_squares(
+    matrix: FloatArray, y: FloatArray, weight: FloatArray | None = None
+) -> LeastSquares:
+    """Fit y, shape (n,), on a matrix of full column rank, shape (n, q); weight, shape (n,)."""
+    w = np.ones(len(y)) if weight is None else weight
+    root = np.sqrt(w)
+    weighted, target = matrix * root[:, None], y * root
+    length = np.sqrt((weighted**2).sum(axis=0))
+    q_factor, r_factor = np.linalg.qr(weighted / length)
+    scaled = solve_triangular(r_factor, q_factor.T @ target)
     # one step of refinement recovers digits that nearly collinear columns cost
-    rest = y - (matrix / length) @ scaled
+    rest = target - (weighted / length) @ scaled
     scaled = scaled + solve_triangular(r_factor, q_factor.T @ rest)
     inverse = solve_triangular(r_factor, np.eye(len(r_factor)))
     residuals = y - (matrix / length) @ scaled
@@ -63,8 +81,10 @@ def least_squares(matrix: FloatArray, y: FloatArray) -> LeastSquares:
         fitted=y - residuals,
         residuals=residuals,
         leverage=np.minimum((q_factor**2).sum(axis=1), 1.0),
+        weight=w,
+        basis=q_factor,
         df=matrix.shape[0] - matrix.shape[1],
-        rss=float(residuals @ residuals),
+        rss=float(w @ residuals**2),
     )
 
 
@@ -79,10 +99,10 @@ def studentized(fit: LeastSquares) -> FloatArray:
     """Externally studentized residuals, shape (n,); NaN where they are undefined."""
     if fit.df < 2:
         return np.full(len(fit.residuals), np.nan)
-    free = 1.0 - fit.leverage
+    free, residuals = 1.0 - fit.leverage, fit.weighted_residuals
     with np.errstate(divide="ignore", invalid="ignore"):
-        without = (fit.rss - fit.residuals**2 / free) / (fit.df - 1)
-        result: FloatArray = fit.residuals / np.sqrt(np.maximum(without, 0.0) * free)
+        without = (fit.rss - residuals**2 / free) / (fit.df - 1)
+        result: FloatArray = residuals / np.sqrt(np.maximum(without, 0.0) * free)
     return np.where((free > _RANK_TOLERANCE) & np.isfinite(result), result, np.nan)
 
 
@@ -93,7 +113,7 @@ def cook_distance(fit: LeastSquares) -> FloatArray:
     free = 1.0 - fit.leverage
     n_columns = len(fit.coefficients)
     with np.errstate(divide="ignore", invalid="ignore"):
-        size = fit.residuals**2 / (n_columns * fit.rss / fit.df)
+        size = fit.weighted_residuals**2 / (n_columns * fit.rss / fit.df)
         result: FloatArray = size * fit.leverage / free**2
     return np.where(free > _RANK_TOLERANCE, result, np.nan)
 
@@ -103,7 +123,7 @@ def press(fit: LeastSquares) -> float | None:
     free = 1.0 - fit.leverage
     if (free <= _RANK_TOLERANCE).any():
         return None
-    return float(((fit.residuals / free) ** 2).sum())
+    return float(((fit.weighted_residuals / free) ** 2).sum())
 
 
 def independent_columns(matrix: FloatArray) -> list[int]:

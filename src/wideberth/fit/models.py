@@ -12,13 +12,19 @@ import numpy as np
 from scipy.special import stdtr
 
 from wideberth.errors import Fault, RefusedError
+from wideberth.fit.anova import by_degree
+from wideberth.fit.between import batch_units, between_blocks, unknown_between
+from wideberth.fit.checks import checks_of
+from wideberth.fit.circumstances import circumstances, left_out_runs
 from wideberth.fit.columns import (
     degree,
     in_printed_order,
     model_matrix,
     model_terms,
     product_factors,
+    stated_terms,
 )
+from wideberth.fit.exact import exact_model
 from wideberth.fit.findings import findings_of, worst_grade
 from wideberth.fit.lack_of_fit import lack_of_fit, replicate_groups
 from wideberth.fit.least_squares import (
@@ -31,8 +37,8 @@ from wideberth.fit.least_squares import (
     press,
     studentized,
 )
+from wideberth.fit.pooling import batch_error
 from wideberth.fit.records import FittedTerm, Model, Models, RunDiagnosis, Term
-from wideberth.quadratic.terms import n_terms, pairs, term_names
 from wideberth.study.records import Finding, FloatArray, IntArray, Response, Study
 
 
@@ -48,9 +54,9 @@ def fit(study: Study) -> Models:
     faults: list[Fault] = []
     for response in study.responses:
         if response.formula is not None:
-            models.append(_exact_model(study, response))
+            models.append(exact_model(study, response))
             continue
-        fault = _unsupported_order(study, response)
+        fault = _unsupported_order(study, response) or _unknown_between(study, response)
         if fault is not None:
             faults.append(fault)
         else:
@@ -69,21 +75,39 @@ def rows_fitted(study: Study, response: Response) -> IntArray:
 
 
 def _unsupported_order(study: Study, response: Response) -> Fault | None:
-    if response.order is None:
+    if response.order is None and response.terms is None:
         return None
     rows = rows_fitted(study, response)
-    terms = model_terms(study, response.order, study.runs.block[rows])
+    terms = _asked_terms(study, response, rows)
     matrix = model_matrix(study, terms, rows)
     kept = independent_columns(matrix)
     lost = [i for i in range(len(terms)) if i not in kept]
     if not lost:
         return None
     sets = [_alias_names(matrix, terms, kept, column) for column in lost]
+    listed = response.terms is not None
+    asked = "the listed model" if listed else f"a model of order {response.order}"
     return Fault(
-        f"{response.name}: a model of order {response.order} has terms that {len(rows)} runs"
+        f"{response.name}: {asked} has terms that {len(rows)} runs"
         f" cannot tell apart: {'; '.join(sets)}",
-        f"study.toml, responses.{response.name}.model.order",
-        "leave the order out to fit what can be told apart, lower it, or add runs",
+        f"study.toml, responses.{response.name}.model.{'terms' if listed else 'order'}",
+        "list fewer terms, or add runs"
+        if listed
+        else "leave the order out to fit what can be told apart, lower it, or add runs",
+    )
+
+
+def _asked_terms(study: Study, response: Response, rows: IntArray) -> tuple[Term, ...]:
+    """Give the terms of a model whose order or terms are stated."""
+    blocks = study.runs.block[rows]
+    if response.terms is not None:
+        return stated_terms(study, response.terms, blocks)
+    return model_terms(study, response.order or 2, blocks)
+
+
+def _unknown_between(study: Study, response: Response) -> Fault | None:
+    return unknown_between(
+        study, response, _terms(study, response, rows_fitted(study, response))[0]
     )
 
 
@@ -160,30 +184,53 @@ def _moving_terms(
     return terms, found
 
 
-def _fitted_model(study: Study, response: Response) -> Model:
-    rows = rows_fitted(study, response)
-    if response.order is None:
+def _terms(
+    study: Study, response: Response, rows: IntArray
+) -> tuple[tuple[Term, ...], tuple[Finding, ...]]:
+    """Choose a model's terms, in printed order, with what is to be said about the choice."""
+    found: tuple[Finding, ...] = ()
+    if response.order is None and response.terms is None:
         terms, found = _supported_terms(study, response, rows)
     else:
-        terms, found = model_terms(study, response.order, study.runs.block[rows]), ()
-    terms = tuple(terms[i] for i in in_printed_order(terms))
+        terms = _asked_terms(study, response, rows)
+    if response.terms is not None:
+        found = (_listed(response),)
+    return tuple(terms[i] for i in in_printed_order(terms)), found
+
+
+def _listed(response: Response) -> Finding:
+    shown = ", ".join("*".join(names) for names in response.terms or () if names)
+    text = (
+        f"{response.name}: only the listed terms are fitted ({shown or 'the constant alone'}); if"
+        " they were picked by looking at these runs, intervals and guards are too sure."
+    )
+    return Finding("look", text, response.name)
+
+
+def _fitted_model(study: Study, response: Response) -> Model:
+    rows = rows_fitted(study, response)
+    terms, found = _terms(study, response, rows)
     y = study.runs.measured[rows, study.measured.index(response)]
-    fitted = least_squares(model_matrix(study, terms, rows), y)
-    noise_free = fitted.df > 0 and is_noise_free(fitted, y)
+    weight = None if study.runs.weight is None else study.runs.weight[rows]
+    matrix = model_matrix(study, terms, rows)
+    fitted = least_squares(matrix, y, weight)
+    exact_fit = fitted.df > 0 and is_noise_free(fitted, y)
     reasons: dict[str, str] = {}
-    s = None
-    if fitted.df > 0:
-        s = 0.0 if noise_free else float(np.sqrt(fitted.rss / fitted.df))
-    else:
+    s, df, pooled = batch_error(fitted, response.known_sd, exact_fit=exact_fit)
+    if s is None:
         reasons["s"] = "there are as many terms as runs, so nothing is left to estimate the noise"
+    between = None if s is None else between_blocks(study, response, terms, fitted, s, df)
+    within, covariance = s, fitted.covariance
+    if between is not None:
+        s, covariance = batch_units(between, terms)
     lack, why = (
         (None, "the model describes the runs exactly")
-        if noise_free
+        if exact_fit
         else lack_of_fit(fitted, y, replicate_groups(study, rows))
     )
     if lack is None:
         reasons["lack_of_fit"] = why
-    total = float(((y - y.mean()) ** 2).sum())
+    total = float(fitted.weight @ (y - np.average(y, weights=fitted.weight)) ** 2)
     constant = float(np.ptp(y)) <= 1e-12 * float(np.abs(y).max(initial=0.0))
     r2, adjusted, press_value, r2_press = _quality(fitted, total, constant, reasons)
     model = Model(
@@ -193,27 +240,37 @@ def _fitted_model(study: Study, response: Response) -> Model:
         order=max(degree(term, len(study.numeric)) for term in terms),
         terms=terms,
         coefficients=fitted.coefficients,
-        covariance=fitted.covariance,
-        table=_table(terms, fitted, s),
+        covariance=covariance,
+        table=_table(terms, fitted, within, df),
         n_runs=len(rows),
         df_residual=fitted.df,
+        df_error=df,
         s=s,
         r2=r2,
         r2_adjusted=adjusted,
         press=press_value,
         r2_press=r2_press,
         lack_of_fit=lack,
-        runs=_runs(study, rows, y, fitted, noise_free),
-        noise_free=noise_free,
+        runs=_runs(study, rows, y, fitted, exact_fit=exact_fit),
+        noise_free=exact_fit and not s,
         findings=found,
         grade="fine",
         reasons=reasons,
+        left_out=left_out_runs(study, response, terms, fitted, within, df),
+        pooled=pooled,
+        between=between,
+        checks=() if exact_fit else checks_of(study, rows, terms, fitted, response.name),
+        anova=by_degree(terms, matrix, y, fitted, lack, len(study.numeric)),
     )
-    return _graded(model, response, y)
+    return _graded(study, model, response, y)
 
 
-def _graded(model: Model, response: Response, y: FloatArray) -> Model:
-    findings = (*model.findings, *findings_of(model, response, y))
+def _graded(study: Study, model: Model, response: Response, y: FloatArray) -> Model:
+    findings = (
+        *model.findings,
+        *findings_of(model, response, y),
+        *circumstances(study, response, model),
+    )
     return replace(model, findings=findings, grade=worst_grade(findings))
 
 
@@ -239,7 +296,7 @@ def _quality(
 
 
 def _table(
-    terms: tuple[Term, ...], fitted: LeastSquares, s: float | None
+    terms: tuple[Term, ...], fitted: LeastSquares, s: float | None, df: int
 ) -> tuple[FittedTerm, ...]:
     rows = []
     for i, term in enumerate(terms):
@@ -249,15 +306,15 @@ def _table(
             continue
         se = s * float(np.sqrt(fitted.covariance[i, i]))
         t = value / se
-        rows.append(FittedTerm(term.name, value, se, t, float(2 * stdtr(fitted.df, -abs(t)))))
+        rows.append(FittedTerm(term.name, value, se, t, float(2 * stdtr(df, -abs(t)))))
     return tuple(rows)
 
 
 def _runs(
-    study: Study, rows: IntArray, y: FloatArray, fitted: LeastSquares, noise_free: bool
+    study: Study, rows: IntArray, y: FloatArray, fitted: LeastSquares, *, exact_fit: bool
 ) -> tuple[RunDiagnosis, ...]:
     outer, cook = studentized(fitted), cook_distance(fitted)
-    known = not noise_free
+    known = not exact_fit
     return tuple(
         RunDiagnosis(
             row=study.runs.rows[row],
@@ -267,62 +324,7 @@ def _runs(
             leverage=float(fitted.leverage[i]),
             studentized=float(outer[i]) if known and np.isfinite(outer[i]) else None,
             cook=float(cook[i]) if known and np.isfinite(cook[i]) else None,
+            weight=float(fitted.weight[i]),
         )
         for i, row in enumerate(rows)
-    )
-
-
-def _exact_model(study: Study, response: Response) -> Model:
-    """Turn a formula in own units into coded coefficients, exactly."""
-    names = tuple(factor.name for factor in study.numeric)
-    k = len(names)
-    middle = np.array([(f.low + f.high) / 2 for f in study.numeric])
-    half = np.array([(f.high - f.low) / 2 for f in study.numeric])
-    beta = np.zeros(n_terms(k))
-    first, second = pairs(k)
-    product_place = {
-        (a, b): 1 + 2 * k + i for i, (a, b) in enumerate(zip(first, second, strict=True))
-    }
-    formula = response.formula
-    for factors, number in (formula.terms if formula else {}).items():
-        places = sorted(names.index(name) for name in factors)
-        if not places:
-            beta[0] += number
-        elif len(places) == 1:
-            (j,) = places
-            beta[0] += number * middle[j]
-            beta[1 + j] += number * half[j]
-        else:
-            a, b = places
-            beta[0] += number * middle[a] * middle[b]
-            beta[1 + a] += number * half[a] * middle[b]
-            beta[1 + b] += number * half[b] * middle[a]
-            place = 1 + k + a if a == b else product_place[(a, b)]
-            beta[place] += number * half[a] * half[b]
-    terms = tuple(Term(name, place) for place, name in enumerate(term_names(names)))
-    reason = "known exactly by its formula"
-    return Model(
-        response=response.name,
-        unit=response.unit,
-        exact=True,
-        order=2,
-        terms=terms,
-        coefficients=beta,
-        covariance=np.zeros((len(beta), len(beta))),
-        table=tuple(
-            FittedTerm(t.name, float(b), None, None, None) for t, b in zip(terms, beta, strict=True)
-        ),
-        n_runs=0,
-        df_residual=0,
-        s=0.0,
-        r2=None,
-        r2_adjusted=None,
-        press=None,
-        r2_press=None,
-        lack_of_fit=None,
-        runs=(),
-        noise_free=False,
-        findings=(Finding("fine", f"{response.name} is {reason}.", response.name),),
-        grade="fine",
-        reasons=dict.fromkeys(("r2", "r2_adjusted", "press", "r2_press", "lack_of_fit"), reason),
     )

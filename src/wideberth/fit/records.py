@@ -11,6 +11,8 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 
 import numpy as np
+import numpy.typing as npt
+from scipy.special import ndtri, stdtridf, stdtrit
 
 from wideberth.quadratic.terms import n_terms
 from wideberth.study.records import CategoricalFactor, Finding, FloatArray, Grade, Study
@@ -69,6 +71,34 @@ class LackOfFit:
     ss_lack: float
     ss_pure: float
     rms_size: float
+    found_size: float
+    """The size, counted like ``rms_size``, that this test finds in 4 of 5 studies."""
+
+
+@dataclass(frozen=True, slots=True)
+class Check:
+    """One check of what a model takes for granted, in one sentence with its grade.
+
+    ``df`` is ``None`` where p comes from simulated residuals.
+    """
+
+    kind: str
+    statistic: float
+    df: tuple[int, int] | None
+    p: float
+    grade: Grade
+    text: str
+
+
+@dataclass(frozen=True, slots=True)
+class Part:
+    """One line of the analysis of variance; ``f`` and ``p`` are ``None`` if it is not tested."""
+
+    source: str
+    df: int
+    squares: float
+    f: float | None
+    p: float | None
 
 
 @dataclass(frozen=True, slots=True)
@@ -82,6 +112,87 @@ class RunDiagnosis:
     leverage: float
     studentized: float | None
     cook: float | None
+    weight: float = 1.0
+
+
+@dataclass(frozen=True, slots=True)
+class LeftOutRun:
+    """A run that is not fitted, held against what the model without it expects of it.
+
+    ``interval`` is the two-sided 95 % prediction interval of that one value; ``None`` where no
+    degrees of freedom support one.
+    """
+
+    row: int
+    reason: str
+    observed: float
+    expected: float
+    interval: tuple[float, float] | None
+
+
+@dataclass(frozen=True, slots=True)
+class Pooled:
+    """What pooling a standard deviation known from history did.
+
+    ``value`` on ``df`` is what was known, ``s_runs`` on the residual degrees of freedom what the
+    runs alone show (``None`` without any), ``p`` the two-sided F test between the two.
+    """
+
+    value: float
+    df: int
+    s_runs: float | None
+    p: float | None
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Between:
+    """The variance between blocks that are a sample of those to come.
+
+    Attributes
+    ----------
+    sd : float
+        Standard deviation between blocks; 0 where their effects are no larger than noise.
+    df : int or None
+        Degrees of freedom behind it; ``None`` where it was stated.
+    n_blocks : int
+        b, the blocks that were run.
+    effects : ndarray, shape (b,)
+        Fitted effects of the blocks, which sum to 0.
+    mean_square : float
+        Of the effects, on ``df``: estimates ``sd**2 + noise * s_within**2``.
+    noise : float
+        What the noise within blocks adds to it, in units of its variance.
+    s_within, df_within : float, int
+        Standard deviation within blocks and its degrees of freedom.
+    covariance_within : ndarray, shape (q, q)
+        Unscaled covariance of the coefficients within blocks: (X'WX)^-1.
+    """
+
+    sd: float
+    df: int | None
+    n_blocks: int
+    effects: FloatArray
+    mean_square: float
+    noise: float
+    s_within: float
+    df_within: int
+    covariance_within: FloatArray
+
+    def degrees(self, variance: FloatArray, extra: float, confidence: float) -> FloatArray:
+        """Give the degrees of freedom whose t quantile serves an estimated variance, any shape.
+
+        ``variance`` is in the response's unit squared; ``extra`` is 0 for a mean, 1 for one batch
+        in a new block, 1/n for the average of n batches in new blocks; ``confidence`` one-sided.
+        The quantile is Cochran's average of those of the two parts (`fit.between`).
+        """
+        between = (1.0 / self.n_blocks + extra) * self.mean_square
+        within = np.maximum(variance - between, 0.0)
+        inner = float(stdtrit(self.df_within, confidence))
+        outer = float(stdtrit(self.df, confidence) if self.df else ndtri(confidence))
+        t: FloatArray = (within * inner + between * outer) / (within + between)
+        # from the one quantile to the degrees of freedom that have it
+        result: FloatArray = np.asarray(stdtridf(confidence, t), dtype=np.float64)
+        return result
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -98,14 +209,18 @@ class Model:
     coefficients : ndarray, shape (q,)
         Coded units.
     covariance : ndarray, shape (q, q)
-        Unscaled: (X'X)^-1; the coefficients' covariance is ``s**2`` times this. Zero if exact.
+        Unscaled: (X'WX)^-1; the coefficients' covariance is ``s**2`` times this. Zero if exact.
+        Where blocks are a sample, the constant's part carries their variance.
     n_runs : int
         Runs that were fitted (0 if exact).
     df_residual : int
-        0 if exact or saturated.
+        Of the runs alone; 0 if exact or saturated.
+    df_error : int
+        Degrees of freedom of the standard deviation within blocks: those of the runs, and of the
+        history that is pooled.
     s : float or None
-        Residual standard deviation; 0.0 for an exact model and an exact fit, ``None`` when no
-        degrees of freedom are left.
+        Standard deviation of one batch of weight 1, in a new block where blocks are a sample; 0.0
+        for an exact model and an exact fit, ``None`` when no degrees of freedom are left.
     noise_free : bool
         Measured, with residuals at rounding level.
     reasons : mapping
@@ -124,6 +239,7 @@ class Model:
     table: tuple[FittedTerm, ...]
     n_runs: int
     df_residual: int
+    df_error: int
     s: float | None
     r2: float | None
     r2_adjusted: float | None
@@ -135,6 +251,28 @@ class Model:
     findings: tuple[Finding, ...]
     grade: Grade
     reasons: Mapping[str, str] = field(default_factory=dict)
+    left_out: tuple[LeftOutRun, ...] = ()
+    pooled: Pooled | None = None
+    between: Between | None = None
+    checks: tuple[Check, ...] = ()
+    anova: tuple[Part, ...] = ()
+
+    def degrees(self, variance: npt.ArrayLike, extra: float, confidence: float) -> FloatArray:
+        """Give the degrees of freedom to take a t quantile with, of the variance's shape.
+
+        Parameters
+        ----------
+        variance : array_like
+            In units of ``s**2``: a leverage plus ``extra``.
+        extra : float
+            0 for a mean, 1 for one batch, 1/n for the average of n batches.
+        confidence : float
+            Of the quantile, one-sided.
+        """
+        own = np.asarray(variance, dtype=np.float64)
+        if self.between is None or not self.s:
+            return np.full_like(own, self.df_error)
+        return self.between.degrees(own * self.s**2, extra, confidence)
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -165,7 +303,7 @@ class Surface:
     s : float
         Standard deviation of one batch (0.0 where there is no noise).
     df : int
-        Residual degrees of freedom (0 where there are none).
+        Degrees of freedom of comparisons within blocks (0 where there are none).
     """
 
     coefficients: FloatArray
@@ -229,7 +367,7 @@ def surface(
         coefficients=mapped @ model.coefficients,
         covariance=mapped @ model.covariance @ mapped.T,
         s=model.s or 0.0,
-        df=model.df_residual,
+        df=model.df_error,
     )
 
 

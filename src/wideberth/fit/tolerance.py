@@ -19,7 +19,7 @@ _LARGEST_NONCENTRALITY = 1e3
 
 
 def tolerance_factor(
-    leverage: npt.ArrayLike, df: int, share: float, confidence: float
+    leverage: npt.ArrayLike, df: float, share: float, confidence: float
 ) -> FloatArray:
     """Give K such that ``mean + K s`` lies above a share of batches with the stated confidence.
 
@@ -27,7 +27,7 @@ def tolerance_factor(
     ----------
     leverage : array_like
         h, the variance of the fitted mean in units of sigma squared; any shape.
-    df : int
+    df : float
         Residual degrees of freedom, 1 or more.
     share, confidence : float
         Between 0 and 1.

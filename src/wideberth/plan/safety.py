@@ -137,7 +137,7 @@ def _broken_limit(
     guarded = guard_is_possible(model, limit)
     guard = Guard(
         limit.guard if guarded else "none",
-        model.df_residual,
+        model.df_error,
         split_confidence(known, limit.confidence, limit.guard),
         limit.share,
     )
@@ -149,7 +149,10 @@ def _broken_limit(
             one = surface(model, known, levels=at, block=block)
             mean = terms[here] @ one.coefficients
             leverage = np.einsum("np,pq,nq->n", terms[here], one.covariance, terms[here])
-            reach = guard.factor(np.maximum(leverage, 1e-12)) * one.s
+            extra = 0.0 if guard.kind == "mean" else 1.0
+            degrees = model.degrees(leverage + extra, extra, guard.confidence)
+            own = replace(guard, df=float(degrees.min(initial=np.inf)))
+            reach = own.factor(np.maximum(leverage, 1e-12)) * one.s
             worst["low"][here] = np.minimum(worst["low"][here], mean - reach)
             worst["high"][here] = np.maximum(worst["high"][here], mean + reach)
     said = []
@@ -166,7 +169,7 @@ def _broken_limit(
 
 def guard_is_possible(model: Model, limit: Limit) -> bool:
     """Tell whether a limit's guard can be computed from a model."""
-    return limit.guard == "none" or model.exact or model.noise_free or model.df_residual > 0
+    return limit.guard == "none" or model.exact or model.noise_free or model.df_error > 0
 
 
 def judging_findings(earlier: Earlier | None, actual: FloatArray) -> list[Finding]:

@@ -4,14 +4,15 @@ from __future__ import annotations
 
 from wideberth.chain.record import Record
 from wideberth.decide.priorities import FARTHEST
-from wideberth.fit.records import Model
+from wideberth.fit.records import LeftOutRun, Model
 from wideberth.report.assurance import assurance
 from wideberth.report.blocks import Block, Bullets, Drawing, Heading, PageBreak, Paragraph, Table
 from wideberth.report.closing import closing
 from wideberth.report.figures import draw_line, draw_map, draw_margins, draw_residuals
 from wideberth.report.frontier_figure import draw_frontier
 from wideberth.report.give_up_words import bound_words, step_words
-from wideberth.report.numbers import format_value, named, with_unit
+from wideberth.report.left_out_words import every_run_sentences
+from wideberth.report.numbers import format_range, format_value, named, with_unit
 from wideberth.report.rows import frontier_row
 from wideberth.report.style import to_svg
 from wideberth.report.wording import (
@@ -51,6 +52,7 @@ def evidence(record: Record) -> tuple[Block, ...]:
         *assurance(record),
         *_goals(record),
         *_models(record),
+        *_left_out(record),
         *_geometry(record),
         *closing(record),
         Heading(3, "Methods and sources"),
@@ -266,7 +268,7 @@ def _models(record: Record) -> list[Block]:
     if any(model.runs for model in record.models.models):
         alt = "Studentized residuals against fitted values of each measured response."
         blocks.append(Drawing(to_svg(draw_residuals(record.models), "residuals"), alt, alt))
-    blocks += [_summary(record)]
+    blocks += [_summary(record), *_checks(record)]
     for model in record.models.models:
         if model.exact:
             blocks.append(Paragraph(f"{model.response} is known exactly by its formula."))
@@ -300,6 +302,23 @@ def _summary(record: Record) -> Table:
     return Table("How well the models describe the runs", header, tuple(rows))
 
 
+def _checks(record: Record) -> list[Block]:
+    models = [model for model in record.models.models if model.checks]
+    kinds = list(dict.fromkeys(check.kind for model in models for check in model.checks))
+    if not kinds:
+        return []
+    rows = []
+    for model in models:
+        found = {check.kind: f"p {check.p:.2g}" for check in model.checks}
+        rows.append((model.response, *(found.get(kind, "") for kind in kinds)))
+    rows.insert(0, ("Response", *(kind.capitalize() for kind in kinds)))
+    if len(kinds) > max(len(models), 4):
+        # the sheet's own columns can be many; then each check has a line
+        rows = list(zip(*rows, strict=True))
+    title = "Checks of the residuals (below 0.01 deserves a look)"
+    return [Table(title, rows[0], tuple(rows[1:]))]
+
+
 def _share(value: float | None) -> str:
     return "" if value is None else f"{value:.3f}"
 
@@ -320,6 +339,41 @@ def _coefficients(model: Model) -> Table:
         f"{model.response}{unit}: coefficients in coded units",
         ("Term", "Coefficient", "Standard error", "t", "p"),
         rows,
+    )
+
+
+def _left_out(record: Record) -> list[Block]:
+    study = record.study
+    if not study.left_out:
+        return []
+    rows = tuple(
+        (str(run.row), model.response, *_left_out_cells(run, model.unit), run.reason)
+        for model in record.models.models
+        for run in model.left_out
+    )
+    header = ("Row", "Response", "Measured", "Expected without it", "95 % of single values")
+    said = [one.words() for one in study.left_out]
+    if record.every_run is not None:
+        said += every_run_sentences(record.every_run, record.choice, study)
+    blocks: list[Block] = [
+        Heading(3, "Runs left out"),
+        Paragraph(
+            "These rows were measured but not fitted, for the reasons stated; beside them stands"
+            " what the answer would be with every run."
+        ),
+        Bullets("", tuple(said)),
+    ]
+    if rows:
+        blocks.append(Table("What the other runs expect of them", (*header, "Reason"), rows))
+    return blocks
+
+
+def _left_out_cells(run: LeftOutRun, unit: str) -> tuple[str, str, str]:
+    half = (run.interval[1] - run.interval[0]) / 2 if run.interval else None
+    return (
+        with_unit(format_value(run.observed, half), unit),
+        with_unit(format_value(run.expected, half), unit),
+        "" if run.interval is None else format_range(*run.interval, half),
     )
 
 

@@ -104,7 +104,8 @@ def setting_word(choice: Choice) -> str:
 def _spoiling(record: Record) -> tuple[Finding, ...]:
     found = [f for f in record.choice.findings if f.grade != "fine"]
     found += [f for f in record.doubts if f.grade != "fine"]
-    return tuple(found)
+    # a doubt about the runs is said by the answer as well
+    return tuple(dict.fromkeys(found))
 
 
 def _given_up(record: Record) -> list[Block]:

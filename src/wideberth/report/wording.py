@@ -129,7 +129,12 @@ def unknowns(study: Study) -> tuple[str, ...]:
         )
     else:
         known.append("Every number speaks of batches at the scale that was run.")
-    if study.runs.blocks:
+    if study.future_blocks == "sample":
+        known.append(
+            f"{', '.join(study.runs.blocks)} are taken as a sample of the blocks to come; a block"
+            " of another kind may differ by more."
+        )
+    elif study.runs.blocks:
         known.append(
             f"Limits are judged at the worst of {', '.join(study.runs.blocks)}; other blocks may"
             " differ."

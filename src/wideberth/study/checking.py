@@ -15,6 +15,7 @@ from wideberth.study.records import (
     Response,
     Study,
 )
+from wideberth.study.resets import seldom_reset
 
 _TOGETHER = 1 - 1e-9
 _ALONE = 0.25
@@ -29,6 +30,7 @@ def check_study(study: Study) -> tuple[Finding, ...]:
         *_goals_and_limits(study),
         *_factors(study),
         *_sets_of_factors(study),
+        *seldom_reset(study),
         *_today(study),
     )
 

@@ -68,7 +68,8 @@ def _read(folder: Path, overrides: Mapping[str, object], *, draft: bool) -> Stud
         # the sheet can still be read against the names when those are sound
         raise InputError([*found, *_sheet_faults(folder, statement, draft=draft)])
     factors, responses = statement.factors(), statement.responses()
-    sheet = read_sheet(folder, tables.study.runs, factors, responses, draft=draft)
+    left_out = statement.left_out()
+    sheet = read_sheet(folder, tables.study.runs, factors, responses, left_out, draft=draft)
     late = [*sheet.faults, *(() if draft else statement.block_faults(sheet))]
     if draft and sheet.faults:
         what = "the sheet that is there does not fit the study"
@@ -99,6 +100,9 @@ def _read(folder: Path, overrides: Mapping[str, object], *, draft: bool) -> Stud
         sha256=hashes,
         stage=tables.memo.stage,
         notes=sheet.notes,
+        left_out=left_out,
+        every_run=sheet.every_run,
+        assays=sheet.assays,
     )
 
 

@@ -110,8 +110,16 @@ class Formula:
 
 
 @dataclass(frozen=True, slots=True)
+class KnownSd:
+    """A batch standard deviation known from history: ``value`` in the response's unit on ``df``."""
+
+    value: float
+    df: int
+
+
+@dataclass(frozen=True, slots=True)
 class Response:
-    """One response: measured, or known exactly by its ``formula``."""
+    """One response: measured, derived from measured ones, or known exactly by its ``formula``."""
 
     name: str
     unit: str
@@ -119,7 +127,52 @@ class Response:
     limit: Limit | None = None
     order: Literal[1, 2] | None = None
     """Stated order of the model; ``None``: 2, or what the runs support."""
+    terms: tuple[tuple[str, ...], ...] | None = None
+    """Stated terms, each as the sorted names it multiplies; ``None``: all of the order."""
     formula: Formula | None = None
+    derived: Formula | None = None
+    """Computed run by run from measured responses (first degree) and factors, then fitted."""
+    known_sd: KnownSd | None = None
+    block_sd: float | None = None
+    """Standard deviation between blocks that are a sample; ``None``: estimated from the runs."""
+
+
+@dataclass(frozen=True, slots=True)
+class LeftOut:
+    """Rows of the sheet that are not fitted, and why.
+
+    ``rows`` are counted as in the file; ``responses`` is empty where they are left out for all.
+    """
+
+    rows: tuple[int, ...]
+    reason: str
+    responses: tuple[str, ...] = ()
+
+    def words(self) -> str:
+        """Say what is left out of which models, and why: ``Row 7 is left out: reason.``."""
+        rows = ", ".join(str(row) for row in self.rows)
+        subject = f"Row {rows} is" if len(self.rows) == 1 else f"Rows {rows} are"
+        scope = f" of {', '.join(self.responses)}" if self.responses else ""
+        return f"{subject} left out{scope}: {self.reason}."
+
+
+@dataclass(frozen=True, slots=True)
+class Assays:
+    """Repeated assays of one response, averaged to one value a batch.
+
+    Attributes
+    ----------
+    counts : tuple of int
+        The different numbers of assays behind the values, rising.
+    sd : float or None
+        Standard deviation of one assay, pooled over the batches; ``None`` without repeats.
+    df : int
+        Its degrees of freedom.
+    """
+
+    counts: tuple[int, ...]
+    sd: float | None
+    df: int
 
 
 @dataclass(frozen=True, slots=True)
@@ -200,20 +253,20 @@ class Context:
 
 @dataclass(frozen=True, slots=True)
 class Runs:
-    """The run sheet. ``n`` rows in file order; axes follow the study's order.
+    """The run sheet. ``n`` runs in file order; axes follow the study's order.
 
     Attributes
     ----------
     file : str
         The sheet's file name.
     rows : tuple of int
-        Row of the file, header = 1.
+        Row of the file, header = 1; of several assays of one batch the first.
     numeric_actual : ndarray, shape (n, n_numeric)
         Numeric factors in own units.
     levels : ndarray of int, shape (n, n_categorical)
         Index of the level of each categorical factor.
     measured : ndarray, shape (n, n_measured)
-        Measured responses in own units, NaN where the cell is empty.
+        Measured responses in own units, NaN where the cell is empty or left out.
     blocks : tuple of str
         The different blocks in order of appearance; empty when the sheet has no block column.
     block : ndarray of int, shape (n,)
@@ -224,6 +277,14 @@ class Runs:
         Run order when the sheet has a ``run`` column of whole numbers.
     note : tuple of str
         The notes, ``""`` where there is none.
+    weight : ndarray of shape (n,) or None
+        How many ordinary runs each is worth: its variance is that of one batch over its weight.
+        ``None`` when the sheet has no weight column: all 1.
+    left_out : tuple of int
+        Places of the runs that are left out for every response.
+    others : mapping of str to tuple of str
+        Cells of the sheet's other columns (lot, operator); never fitted, looked at in the
+        diagnosis.
     filled : bool
         Something was entered that a plan does not write: a result, a setting as run, a lot, a note.
     """
@@ -239,11 +300,16 @@ class Runs:
     order: tuple[int, ...] | None
     note: tuple[str, ...]
     filled: bool = False
+    weight: FloatArray | None = None
+    left_out: tuple[int, ...] = ()
+    others: Mapping[str, tuple[str, ...]] = field(default_factory=dict)
 
     @property
     def fitted(self) -> BoolArray:
-        """Rows that may be fitted: neither ``confirm`` nor ``failed``; shape (n,)."""
-        return np.array([kind not in ("confirm", "failed") for kind in self.kind], dtype=np.bool_)
+        """Runs that may be fitted: not ``confirm``, ``failed`` or left out; shape (n,)."""
+        fitted = np.array([kind not in ("confirm", "failed") for kind in self.kind], dtype=np.bool_)
+        fitted[list(self.left_out)] = False
+        return fitted
 
 
 @dataclass(frozen=True, slots=True)
@@ -268,6 +334,11 @@ class Study:
     """What reading found worth saying (a default taken, an empty cell)."""
     stage: Literal["draft", "final"] = "draft"
     """What the memo is, as its owner says."""
+    left_out: tuple[LeftOut, ...] = ()
+    every_run: Runs | None = None
+    """The runs with nothing left out; ``None`` where ``runs`` is that already."""
+    assays: Mapping[str, Assays] = field(default_factory=dict)
+    """By response; empty when the sheet has no sample column."""
 
     @property
     def numeric(self) -> tuple[NumericFactor, ...]:
@@ -281,5 +352,5 @@ class Study:
 
     @property
     def measured(self) -> tuple[Response, ...]:
-        """The responses that were measured, in the study's order."""
+        """The responses that have a value a run, measured or derived, in the study's order."""
         return tuple(r for r in self.responses if r.formula is None)

@@ -86,8 +86,15 @@ class ModelTable(_Table):
     """``model`` of a response."""
 
     order: Literal[1, 2] | None = None
-    terms: Literal["all"] = "all"
+    terms: Text | Annotated[list[Text], Field(min_length=1)] = "all"
     transform: Literal["none"] = "none"
+
+
+class KnownSdTable(_Table):
+    """``known_sd`` of a response."""
+
+    value: Annotated[Number, Field(gt=0)]
+    df: Annotated[int, Field(ge=1)]
 
 
 class ResponseTable(_Table):
@@ -97,6 +104,8 @@ class ResponseTable(_Table):
     goal: GoalTable | None = None
     limit: LimitTable | None = None
     model: ModelTable | None = None
+    known_sd: KnownSdTable | None = None
+    block_sd: Annotated[Number, Field(gt=0)] | None = None
     formula: dict[str, Number] | None = None
 
 
@@ -152,6 +161,14 @@ class MemoTable(_Table):
     stage: Literal["draft", "final"] = "draft"
 
 
+class LeaveOutTable(_Table):
+    """One of ``[[leave_out]]``."""
+
+    rows: Annotated[list[int], Field(min_length=1)]
+    reason: Text
+    responses: Annotated[list[Text], Field(min_length=1)] | None = None
+
+
 class StudyFile(_Table):
     """The whole file."""
 
@@ -162,6 +179,7 @@ class StudyFile(_Table):
     constraints: list[ConstraintTable] = Field(default_factory=list)
     region: RegionTable = RegionTable()
     blocks: BlocksTable | None = None
+    leave_out: list[LeaveOutTable] = Field(default_factory=list)
     today: dict[str, Number | str] = Field(default_factory=dict)
     plan: PlanTable = PlanTable()
     memo: MemoTable = MemoTable()
@@ -175,10 +193,12 @@ _TABLES: dict[str, type[BaseModel]] = {
     "responses.*.goal": GoalTable,
     "responses.*.limit": LimitTable,
     "responses.*.model": ModelTable,
+    "responses.*.known_sd": KnownSdTable,
     "constraints.*": ConstraintTable,
     "region": RegionTable,
     "region.keep": RadiusTable,
     "blocks": BlocksTable,
+    "leave_out.*": LeaveOutTable,
     "plan": PlanTable,
     "memo": MemoTable,
     "": StudyFile,
@@ -223,7 +243,9 @@ def _own_path(location: tuple[int | str, ...]) -> KeyPath:
 
 def _fault(detail: Any, path: KeyPath, lines: Mapping[KeyPath, int]) -> Fault:
     kind, value, limits = detail["type"], detail["input"], detail.get("ctx", {})
-    where, key = place(path, lines), str(path[-1]) if path else ""
+    # an item of a list is known by the list's name
+    key = next((part for part in reversed(path) if isinstance(part, str)), "")
+    where = place(path, lines)
     if kind == "extra_forbidden":
         known = _known_keys(path[:-1])
         near = get_close_matches(key, known, n=1, cutoff=0.6)
@@ -275,7 +297,7 @@ _ALLOWED = {
 def _known_keys(table: KeyPath) -> list[str]:
     parts = [
         "*"
-        if i and str(table[0]) in ("factors", "responses", "constraints") and i == 1
+        if i and str(table[0]) in ("factors", "responses", "constraints", "leave_out") and i == 1
         else str(part)
         for i, part in enumerate(table)
     ]

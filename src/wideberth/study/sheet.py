@@ -4,21 +4,24 @@ from __future__ import annotations
 
 import hashlib
 import re
-from collections.abc import Iterator
-from dataclasses import dataclass
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 
 import numpy as np
 
 from wideberth.errors import Fault
+from wideberth.study.gathering import gather
 from wideberth.study.naming import AS_RUN, nearest
 from wideberth.study.records import (
-    BoolArray,
+    Assays,
     CategoricalFactor,
     Factor,
     Finding,
     FloatArray,
+    Formula,
     IntArray,
+    LeftOut,
     NumericFactor,
     Response,
     Runs,
@@ -29,6 +32,7 @@ from wideberth.study.template import template_sheet
 KINDS = ("factorial", "axial", "centre", "confirm", "failed")
 _HEADER = re.compile(r"(?P<name>.*?)\s*(?:\[(?P<unit>[^\]]*)\])?\s*")
 _UNFITTED = ("confirm", "failed")
+_OWN_COLUMNS = ("run", "block", "kind", "note", "weight", "sample")
 EVEN_SO = "EVEN SO:"
 """How a plan marks a run that it wrote although it must not be run."""
 
@@ -41,6 +45,8 @@ class SheetContent:
     faults: tuple[Fault, ...]
     notes: tuple[Finding, ...] = ()
     sha256: str = ""
+    every_run: Runs | None = None
+    assays: Mapping[str, Assays] = field(default_factory=dict)
 
 
 def read_sheet(
@@ -48,6 +54,7 @@ def read_sheet(
     file: str,
     factors: tuple[Factor, ...],
     responses: tuple[Response, ...],
+    left_out: tuple[LeftOut, ...] = (),
     *,
     draft: bool = False,
 ) -> SheetContent:
@@ -73,10 +80,8 @@ def read_sheet(
             if draft
             else SheetContent(None, (empty,))
         )
-    content = _interpret(table, factors, responses, draft=draft)
-    return SheetContent(
-        content.runs, content.faults, content.notes, hashlib.sha256(raw).hexdigest()
-    )
+    content = _interpret(table, factors, responses, left_out, draft=draft)
+    return replace(content, sha256=hashlib.sha256(raw).hexdigest())
 
 
 def _sheet_bytes(folder: Path, file: str) -> tuple[bytes, Fault | None]:
@@ -130,6 +135,7 @@ def _interpret(
     table: SheetTable,
     factors: tuple[Factor, ...],
     responses: tuple[Response, ...],
+    left_out: tuple[LeftOut, ...],
     *,
     draft: bool,
 ) -> SheetContent:
@@ -148,16 +154,18 @@ def _interpret(
     reader = _Cells(table, columns)
     faults += reader.problems([*factors, *responses])
     kinds = tuple(reader.kinds(faults))
-    fitted = np.array([kind not in _UNFITTED for kind in kinds], dtype=np.bool_)
     numeric = [f for f in factors if isinstance(f, NumericFactor)]
     categorical = [f for f in factors if isinstance(f, CategoricalFactor)]
-    measured = [r for r in responses if r.formula is None]
+    measured = tuple(r for r in responses if r.formula is None)
     n = len(table.rows)
     planned = np.array([reader.factor(f, faults) for f in numeric]).reshape(len(numeric), n).T
     as_run = np.array([reader.as_run(f, faults) for f in numeric]).reshape(len(numeric), n).T
     actual, strayed = _as_run(table, numeric, planned, as_run)
     levels = np.array([reader.levels(f, faults) for f in categorical], dtype=np.int64)
-    values = np.array([reader.response(r, faults) for r in measured]).reshape(len(measured), n).T
+    read = {r.name: np.array(reader.response(r, faults)) for r in measured if r.derived is None}
+    read |= {factor.name: actual[:, j] for j, factor in enumerate(numeric)}
+    read |= {r.name: _derived(r.derived, read, n) for r in measured if r.derived is not None}
+    values = np.array([read[r.name] for r in measured]).reshape(len(measured), n).T
     blocks, block = reader.blocks(faults)
     runs = Runs(
         file=table.file,
@@ -172,11 +180,36 @@ def _interpret(
         note=tuple(reader.texts("note")),
         filled=bool(np.isfinite(values).any() or np.isfinite(as_run).any())
         or reader.remarked(lots="lot" not in {f.name for f in (*factors, *responses)}),
+        weight=reader.weights(faults),
+        others={name: tuple(reader.texts(name)) for name in reader.others(factors, responses)},
     )
-    if not faults and not draft:
-        faults += _enough(runs, fitted, measured, table.file)
-    notes = (*strayed, *_missing_notes(runs, fitted, measured))
-    return SheetContent(None if faults else runs, tuple(faults), notes)
+    if faults:
+        return SheetContent(None, tuple(faults))
+    gathered, late = gather(runs, list(reader.texts("sample")), left_out, measured)
+    if gathered is None:
+        return SheetContent(None, late)
+    if not draft:
+        faults += _enough(gathered.runs, measured)
+    notes = (*strayed, *_missing_notes(gathered.every_run or gathered.runs, measured))
+    return SheetContent(
+        None if faults else gathered.runs,
+        tuple(faults),
+        notes,
+        every_run=gathered.every_run,
+        assays=gathered.assays,
+    )
+
+
+def _derived(formula: Formula, read: Mapping[str, FloatArray], n_rows: int) -> FloatArray:
+    """Compute a derived response from the columns that it names; empty where one of them is."""
+    value = np.zeros(n_rows)
+    for names, number in formula.terms.items():
+        term = np.full(n_rows, number)
+        for name in names:
+            # a name without a column is a fault of the statement, and said there
+            term = term * read.get(name, np.full(n_rows, np.nan))
+        value = value + term
+    return value
 
 
 def header_name(heading: str) -> str:
@@ -198,7 +231,7 @@ def _columns(
         match = _HEADER.fullmatch(heading)
         name = header_name(heading)
         unit = match["unit"] if match else None
-        if name in columns and (name in units or name in ("run", "block", "kind", "note")):
+        if name in columns and (name in units or name in _OWN_COLUMNS):
             faults.append(Fault(f"two columns are called {name}", where, "rename or delete one"))
         columns.setdefault(name, index)
         if unit is not None and name in units and unit.strip() != units[name]:
@@ -209,7 +242,8 @@ def _columns(
                     "write the same unit in both, and convert the numbers if they differ",
                 )
             )
-    needed = [f.name for f in factors] + [r.name for r in responses if r.formula is None]
+    needed = [f.name for f in factors]
+    needed += [r.name for r in responses if r.formula is None and r.derived is None]
     unknown = [name for name in columns if name and name not in units]
     for name in needed:
         if name not in columns:
@@ -365,6 +399,29 @@ class _Cells:
         places = [different.index(name) if name else 0 for name in names]
         return different, np.array(places, dtype=np.int64)
 
+    def weights(self, faults: list[Fault]) -> FloatArray | None:
+        if "weight" not in self.columns:
+            return None
+        numbers = []
+        for row, cell in self._column("weight"):
+            number = self._number(cell)
+            if number is None or number <= 0:
+                shown = f"'{cell}'" if cell else "empty"
+                faults.append(
+                    Fault(
+                        f"the weight is {shown}",
+                        self._where(row, "weight"),
+                        "give a number above 0: how many single batches the row is worth",
+                    )
+                )
+            numbers.append(1.0 if number is None else number)
+        return np.array(numbers)
+
+    def others(self, factors: tuple[Factor, ...], responses: tuple[Response, ...]) -> list[str]:
+        known = {f.name for f in factors} | {r.name for r in responses} | set(_OWN_COLUMNS)
+        known |= {f"{f.name}{AS_RUN}" for f in factors}
+        return [name for name in self.columns if name and name not in known]
+
     def _decimal_hint(self, cell: str) -> str:
         if not re.fullmatch(r"[-+]?\d+,\d+", cell):
             return ""
@@ -379,15 +436,17 @@ class _Cells:
         return tuple(int(cell) for cell in cells)
 
 
-def _enough(runs: Runs, fitted: BoolArray, measured: list[Response], file: str) -> list[Fault]:
+def _enough(runs: Runs, measured: tuple[Response, ...]) -> list[Fault]:
+    fitted = runs.fitted
     settings = np.concatenate([runs.numeric_actual, runs.levels], axis=1)[fitted]
     if len(np.unique(settings, axis=0)) < 2:
         what = "fewer than two different settings were run"
-        return [Fault(what, file, "add runs at other settings (confirm and failed are not fitted)")]
+        mend = "add runs at other settings (confirm, failed and left-out runs are not fitted)"
+        return [Fault(what, runs.file, mend)]
     return [
         Fault(
             f"no run has a value of {response.name}",
-            f"{file}, column {response.name}",
+            f"{runs.file}, column {response.name}",
             "fill in what was measured",
         )
         for i, response in enumerate(measured)
@@ -423,12 +482,12 @@ def _as_run(
     return actual, tuple(notes)
 
 
-def _missing_notes(runs: Runs, fitted: BoolArray, measured: list[Response]) -> tuple[Finding, ...]:
+def _missing_notes(runs: Runs, measured: tuple[Response, ...]) -> tuple[Finding, ...]:
     notes = []
     for i, response in enumerate(measured):
         empty = [
             str(row)
-            for row, used, value in zip(runs.rows, fitted, runs.measured[:, i], strict=True)
+            for row, used, value in zip(runs.rows, runs.fitted, runs.measured[:, i], strict=True)
             if used and np.isnan(value)
         ]
         if empty:

@@ -10,24 +10,23 @@ from wideberth.errors import Fault
 from wideberth.study.lines import KeyPath
 from wideberth.study.naming import name_faults, nearest
 from wideberth.study.plan_statement import plan_faults
-from wideberth.study.records import (
-    CategoricalFactor,
-    Factor,
-    Formula,
-    Goal,
-    Limit,
-    NumericFactor,
-    Response,
-)
+from wideberth.study.records import Factor, LeftOut, Response
 from wideberth.study.schema import (
     FactorTable,
     GoalTable,
     LimitTable,
+    ModelTable,
     ResponseTable,
     StudyFile,
     place,
 )
 from wideberth.study.sheet import SheetContent
+from wideberth.study.stated_records import (
+    factor_record,
+    numbers_of,
+    response_record,
+    term_factors,
+)
 
 STUDY_FILE = "study.toml"
 
@@ -55,6 +54,7 @@ class Statement:
         for name, response in self.tables.responses.items():
             yield from self._response_faults(name, response)
         yield from self._constraint_faults()
+        yield from self._leave_out_faults()
         yield from self._today_faults()
         yield from plan_faults(self.tables, self.at)
         yield from self._stage_faults()
@@ -135,38 +135,121 @@ class Statement:
             )
 
     def _response_faults(self, name: str, table: ResponseTable) -> Iterator[Fault]:
+        exact = table.formula is not None and not self._parts(table)
         if table.limit is not None:
-            yield from self._limit_faults(name, table.limit, exact=table.formula is not None)
+            yield from self._limit_faults(name, table.limit, exact=exact)
         if table.goal is not None:
             yield from self._goal_faults(name, table.goal)
+        if table.model is not None and not exact:
+            yield from self._model_faults(name, table.model)
         if table.formula is None:
             return
         where = self.at("responses", name, "formula")
         if not table.formula:
             yield Fault("the formula is empty", where, "state at least one term")
-        if table.model is not None:
-            yield Fault(
-                f"{name} has a formula and a model", where, "an exact response is not fitted"
-            )
+        for key in ("model", "known_sd", "block_sd"):
+            if exact and getattr(table, key) is not None:
+                yield Fault(
+                    f"{name} has a formula and a {key}", where, "an exact response is not fitted"
+                )
         for term in table.formula:
             yield from self._term_faults(name, term)
 
+    def _model_faults(self, name: str, table: ModelTable) -> Iterator[Fault]:
+        where = self.at("responses", name, "model", "terms")
+        if isinstance(table.terms, str):
+            if table.terms != "all":
+                yield Fault(
+                    f"terms is '{table.terms}'",
+                    where,
+                    "use 'all' or a list like ['a', 'b', 'a*b']; terms are not chosen from the data"
+                    " here, because guards would then promise more than they hold",
+                )
+            return
+        if table.order is not None:
+            yield Fault(
+                f"the model of {name} has an order and a list of terms", where, "state one of them"
+            )
+        stated = [tuple(sorted(term_factors(term))) for term in table.terms]
+        for term, names in zip(table.terms, stated, strict=True):
+            yield from self._listed_faults(term, names, stated, where)
+
+    def _listed_faults(
+        self, term: str, names: tuple[str, ...], stated: list[tuple[str, ...]], where: str
+    ) -> Iterator[Fault]:
+        """Check one listed term: known factors, degree 2 at most, and its parts listed as well."""
+        factors = self.tables.factors
+        unknown = [factor for factor in names if factor not in factors]
+        for factor in unknown:
+            mend = nearest(factor, factors, "use the names of factors")
+            yield Fault(f"the term {term} names no factor of the study: {factor}", where, mend)
+        if unknown:
+            return
+        levelled = [factor for factor in names if factors[factor].levels is not None]
+        if len(names) > 2 or len(levelled) > 1:
+            yield Fault(
+                f"the term {term} is beyond a second-order model",
+                where,
+                "use squares and products of two factors, at most one of them with levels",
+            )
+            return
+        missing = [factor for factor in set(names) if (factor,) not in stated]
+        if len(names) == 2 and missing:
+            yield Fault(
+                f"{term} is listed without {' and '.join(sorted(missing))}",
+                where,
+                "list what a term is made of too: without it the model depends on the coding",
+            )
+
     def _term_faults(self, name: str, term: str) -> Iterator[Fault]:
         where = self.at("responses", name, "formula", term)
-        names = _term_factors(term)
+        names = term_factors(term)
         if len(names) > 2:
             yield Fault(f"the term {term} is of degree {len(names)}", where, "use degree 2 at most")
+        if names == ["per"]:
+            yield Fault("a denominator is not served", where, "measure the ratio as a response")
+            return
+        if set(names) & set(self.tables.responses):
+            yield from self._derived_faults(term, names, where)
+            return
         for factor in names:
             table = self.tables.factors.get(factor)
             if table is None:
+                known = [*self._numeric_names(), *self._measured_names()]
                 yield Fault(
                     f"the term {term} names no factor of the study: {factor}",
                     where,
-                    nearest(factor, self._numeric_names(), "use the names of numeric factors"),
+                    nearest(factor, known, "use the names of numeric factors"),
                 )
             elif table.levels is not None or table.scale == "log":
                 kind = "has levels" if table.levels is not None else "is on a log scale"
                 yield Fault(f"{factor} {kind} and cannot stand in a formula", where, "leave it out")
+
+    def _derived_faults(self, term: str, names: list[str], where: str) -> Iterator[Fault]:
+        """Check a term of a formula that names a response: a measured one, by itself."""
+        for name in names:
+            table = self.tables.responses.get(name)
+            if table is not None and table.formula is not None:
+                yield Fault(
+                    f"the term {term} names {name}, which has a formula itself",
+                    where,
+                    "write out what it is made of",
+                )
+                return
+        if len(names) > 1:
+            yield Fault(
+                f"the term {term} multiplies a measured response",
+                where,
+                "measured responses may only be added, each with a number",
+            )
+
+    def _measured_names(self) -> list[str]:
+        return [name for name, table in self.tables.responses.items() if table.formula is None]
+
+    def _parts(self, table: ResponseTable) -> list[str]:
+        """Name the measured responses that a formula is computed from."""
+        named = {name for term in table.formula or () for name in term_factors(term)}
+        return [name for name in self._measured_names() if name in named]
 
     def _numeric_names(self) -> list[str]:
         return [name for name, table in self.tables.factors.items() if table.levels is None]
@@ -190,7 +273,7 @@ class Statement:
 
     def _goal_faults(self, name: str, table: GoalTable) -> Iterator[Fault]:
         where = self.at("responses", name, "goal")
-        poor, ideal = _numbers(table.poor), _numbers(table.ideal)
+        poor, ideal = numbers_of(table.poor), numbers_of(table.ideal)
         if table.want == "near":
             yield from self._near_faults(name, poor, ideal)
             return
@@ -263,6 +346,17 @@ class Statement:
                         "constraints take factors on a linear scale",
                     )
 
+    def _leave_out_faults(self) -> Iterator[Fault]:
+        measured = self._measured_names()
+        for i, table in enumerate(self.tables.leave_out):
+            for name in table.responses or ():
+                if name not in measured:
+                    yield Fault(
+                        f"[[leave_out]] names no measured response: {name}",
+                        self.at("leave_out", i, "responses"),
+                        nearest(name, measured, "use the names of measured responses"),
+                    )
+
     def _today_faults(self) -> Iterator[Fault]:
         for name, value in self.tables.today.items():
             where = self.at("today", name)
@@ -289,14 +383,24 @@ class Statement:
             yield Fault(
                 f"the sheet has blocks ({', '.join(blocks)}), but [blocks] is not stated",
                 STUDY_FILE,
-                "state future = 'recur' if the same blocks come again",
+                "state future = 'recur' if the same blocks come again (two reactors), 'sample' if"
+                " they are a sample of many (days, lots)",
             )
-        if stated is not None and stated.future == "sample":
-            yield Fault(
-                "blocks that are a sample of days or lots are not served yet",
-                self.at("blocks", "future"),
-                "use 'recur' only if the same blocks, say two reactors, come again",
-            )
+        sample = stated is not None and stated.future == "sample"
+        for name, table in self.tables.responses.items():
+            if table.block_sd is not None and not sample:
+                yield Fault(
+                    f"{name} has a block_sd, but the blocks are not a sample",
+                    self.at("responses", name, "block_sd"),
+                    "state [blocks] future = 'sample', or take block_sd out",
+                )
+            if sample and table.limit is not None and table.limit.guard == "share":
+                yield Fault(
+                    f"{name} is guarded by a share of batches, which cannot be promised exactly"
+                    " where blocks are a sample",
+                    self.at("responses", name, "limit"),
+                    "use guard = 'batch'",
+                )
         if stated is not None and not blocks:
             yield Fault(
                 "[blocks] is stated, but the sheet has no block column",
@@ -306,79 +410,22 @@ class Statement:
 
     def factors(self) -> tuple[Factor, ...]:
         """Give the factors as records, in the order stated."""
-        return tuple(_factor(name, table) for name, table in self.tables.factors.items())
+        return tuple(factor_record(name, table) for name, table in self.tables.factors.items())
+
+    def left_out(self) -> tuple[LeftOut, ...]:
+        """Give what is left out of the fit, as records."""
+        derived = {name: self._parts(table) for name, table in self.tables.responses.items()}
+        found = []
+        for table in self.tables.leave_out:
+            named = list(table.responses or ())
+            # what is derived from a left-out value is left out with it
+            named += [name for name, parts in derived.items() if set(parts) & set(named)]
+            found.append(LeftOut(tuple(table.rows), table.reason, tuple(named)))
+        return tuple(found)
 
     def responses(self) -> tuple[Response, ...]:
         """Give the responses as records, in the order stated."""
-        return tuple(_response(name, table) for name, table in self.tables.responses.items())
-
-
-def _factor(name: str, table: FactorTable) -> Factor:
-    if table.levels is not None:
-        return CategoricalFactor(name, table.unit or "", tuple(table.levels))
-    step = table.settable_step
-    return NumericFactor(
-        name=name,
-        unit=table.unit or "",
-        low=0.0 if table.low is None else table.low,
-        high=1.0 if table.high is None else table.high,
-        allowed=None if table.allowed is None else (table.allowed[0], table.allowed[1]),
-        tolerance=table.tolerance,
-        settable_step=None if step is None else Decimal(repr(step)),
-        scale=table.scale,
-        reading_error=table.reading_error,
-    )
-
-
-def _response(name: str, table: ResponseTable) -> Response:
-    return Response(
-        name=name,
-        unit=table.unit,
-        goal=None if table.goal is None else _goal(table.goal),
-        limit=None if table.limit is None else _limit(table.limit, exact=table.formula is not None),
-        order=table.model.order if table.model else None,
-        formula=None if table.formula is None else _formula(table.formula),
-    )
-
-
-def _goal(table: GoalTable) -> Goal:
-    ideal = _numbers(table.ideal)
-    if table.want == "near" and ideal is not None and len(ideal) == 1:
-        ideal = (ideal[0], ideal[0])
-    exponent = _numbers(table.exponent) or (1.0,)
-    return Goal(
-        want=table.want,
-        poor=_numbers(table.poor),
-        ideal=ideal,
-        exponent=(exponent[0], exponent[-1]),
-        priority=table.priority,
-    )
-
-
-def _limit(table: LimitTable, *, exact: bool) -> Limit:
-    guard = table.guard or ("none" if exact else "batch")
-    return Limit(table.low, table.high, guard, table.confidence, table.share, table.point)
-
-
-def _formula(table: Mapping[str, float]) -> Formula:
-    terms: dict[tuple[str, ...], float] = {}
-    for term, number in table.items():
-        names = tuple(sorted(_term_factors(term)))
-        terms[names] = terms.get(names, 0.0) + number
-    return Formula(terms)
-
-
-def _term_factors(term: str) -> list[str]:
-    """Split ``constant``, ``a``, ``a^2``, ``a*b`` into the factors it multiplies."""
-    names: list[str] = []
-    for part in (piece.strip() for piece in term.split("*")):
-        base, caret, power = part.partition("^")
-        count = int(power) if caret and power.strip().isdigit() and int(power) < 9 else 1
-        names += [base.strip() if caret and count > 1 else part] * count
-    return [] if names == ["constant"] else names
-
-
-def _numbers(value: float | list[float] | None) -> tuple[float, ...] | None:
-    if value is None:
-        return None
-    return tuple(value) if isinstance(value, list) else (value,)
+        return tuple(
+            response_record(name, table, derived=bool(self._parts(table)))
+            for name, table in self.tables.responses.items()
+        )

@@ -296,7 +296,7 @@ def _findings(problem: Problem, result: Uncertainty) -> tuple[Finding, ...]:
     few = [
         m.response
         for m in problem.models.models
-        if m.response in asked and not m.exact and 0 < m.df_residual < _FEW_DF
+        if m.response in asked and not m.exact and 0 < m.df_error < _FEW_DF
     ]
     if few:
         found.append(

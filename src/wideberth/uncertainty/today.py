@@ -87,9 +87,9 @@ def _difference(
     mean = float(moved @ model.coefficients)
     if model.exact or model.noise_free:
         return Difference(mean, (mean, mean))
-    if model.s is None or not model.df_residual:
+    if model.s is None or not model.df_error:
         return Difference(mean, None)
-    half = float(stdtrit(model.df_residual, _TWO_SIDED)) * model.s
+    half = float(stdtrit(model.df_error, _TWO_SIDED)) * model.s
     half *= float(np.sqrt(moved @ model.covariance @ moved))
     return Difference(mean, (mean - half, mean + half))
 
