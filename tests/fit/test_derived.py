@@ -101,7 +101,7 @@ def test_a_missing_or_left_out_part_is_missing_in_it(tmp_path):
 
 
 def test_the_record_keeps_the_formula(tmp_path):
-    stated = as_json._study(_study(tmp_path))["responses"][2]
+    stated = as_json.study_json(_study(tmp_path))["responses"][2]
     assert stated["derived"] == {
         "constant": 0.5, "dimer": 1, "colour": 2, "dose": 0.1, "dose*speed": 0.01,
     }  # fmt: skip

@@ -92,7 +92,7 @@ def recommend_json(choice: Choice, study: Study, whole: EveryRun | None = None) 
     content = _plain(choice)
     head = {**_head("recommend", study), "seed": choice.seed}
     answer = {**head, **{key: value for key, value in content.items() if key != "seed"}}
-    return answer if whole is None else {**answer, "with_every_run": _plain(whole)}
+    return {**answer, "with_every_run": _plain(whole)}
 
 
 def give_ups_json(costs: tuple[GiveUp, ...]) -> list[Any]:
@@ -199,7 +199,7 @@ def _head(command: str, study: Study) -> Json:
 
 
 def _model(model: Model) -> Json:
-    content: Json = {
+    return {
         "unit": model.unit,
         "exact": model.exact,
         "order": model.order,
@@ -212,7 +212,7 @@ def _model(model: Model) -> Json:
         "r2_adjusted": model.r2_adjusted,
         "press": model.press,
         "r2_press": model.r2_press,
-        "lack_of_fit": None,
+        "lack_of_fit": _plain(model.lack_of_fit),
         "noise_free": model.noise_free,
         "anova": [_plain(part) for part in model.anova],
         "checks": [_plain(check) for check in model.checks],
@@ -220,18 +220,10 @@ def _model(model: Model) -> Json:
         "findings": [asdict(finding) for finding in model.findings],
         "grade": model.grade,
         "reasons": dict(model.reasons),
+        "left_out": [_plain(run) for run in model.left_out],
+        "between_blocks": _plain(model.between),
+        "pooled": _plain(model.pooled),
     }
-    if model.lack_of_fit is not None:
-        content["lack_of_fit"] = _plain(model.lack_of_fit)
-    if model.left_out:
-        content["left_out"] = [_plain(run) for run in model.left_out]
-    if model.between is not None:
-        between = _plain(model.between)
-        del between["covariance_within"]
-        content["between_blocks"] = between
-    if model.pooled is not None:
-        content["pooled"] = _plain(model.pooled)
-    return content
 
 
 def _equations(study: Study, model: Model) -> Json:

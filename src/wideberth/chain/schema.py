@@ -17,12 +17,22 @@ import numpy as np
 
 from wideberth.chain.as_json import FORMULAS, NOT_TOLD, Json
 from wideberth.decide.alternatives import Alternative
+from wideberth.decide.every_run import EveryRun
 from wideberth.decide.frontier import Frontier
 from wideberth.decide.give_ups import GiveUp
 from wideberth.decide.priorities import Priorities
 from wideberth.decide.prospects import Prospects
 from wideberth.decide.records import Choice, FactorMap
-from wideberth.fit.records import FittedTerm, LackOfFit, RunDiagnosis
+from wideberth.fit.records import (
+    Between,
+    Check,
+    FittedTerm,
+    LackOfFit,
+    LeftOutRun,
+    Part,
+    Pooled,
+    RunDiagnosis,
+)
 from wideberth.operate.records import Outward, Robustness, Window
 from wideberth.study.records import Finding, Study
 from wideberth.surface.records import Shape
@@ -81,7 +91,7 @@ def record_schema() -> Json:
                 ]
             },
         },
-        "recommend": step(Choice),
+        "recommend": _with(step(Choice), "with_every_run", of(EveryRun | None)),
         "uncertainty": step(Uncertainty),
         "window": step(Window),
         "robustness": step(Robustness),
@@ -122,6 +132,11 @@ def record_schema() -> Json:
     }
 
 
+def _with(whole: Json, name: str, part: Json) -> Json:
+    """Add a property that the writer adds to a record."""
+    return _object({**whole["properties"], name: part}, whole["description"])
+
+
 def _change() -> Json:
     anything: Json = {}
     properties = {"part": _TEXT, "what": _TEXT, "before": anything, "now": anything}
@@ -135,14 +150,20 @@ def _model(of: Any) -> Json:
         "order": of(int),
         "n": of(int),
         "df_residual": of(int),
+        "df_error": of(int),
         "coefficients": of(tuple[FittedTerm, ...]),
         **dict.fromkeys(("s", "r2", "r2_adjusted", "press", "r2_press"), _NUMBER_OR_NULL),
         "lack_of_fit": of(LackOfFit | None),
         "noise_free": of(bool),
+        "anova": of(tuple[Part, ...]),
+        "checks": of(tuple[Check, ...]),
         "runs": of(tuple[RunDiagnosis, ...]),
         "findings": of(tuple[Finding, ...]),
         "grade": _TEXT,
         "reasons": of(Mapping[str, str]),
+        "left_out": of(tuple[LeftOutRun, ...]),
+        "between_blocks": of(Between | None),
+        "pooled": of(Pooled | None),
         "unscaled_covariance": of(np.ndarray),
     }
     return _object(properties, "The model of one response and its diagnosis.")
