@@ -15,7 +15,8 @@ from wideberth.decide.desirability import shares_of_priority, sides
 from wideberth.decide.guards import SmoothGuard
 from wideberth.decide.records import ResolvedGoal
 from wideberth.decide.region import Region, Room
-from wideberth.quadratic.terms import features
+from wideberth.quadratic.stack import Stack
+from wideberth.quadratic.terms import feature_gradients, features
 from wideberth.study.records import FloatArray, IntArray, Side
 
 
@@ -57,6 +58,18 @@ class HardRow:
             return value
         leverage = np.einsum("...p,...p->...", terms @ self.covariance, terms)
         return value - self.weight * self.guard.value(leverage)
+
+    def slope(self, x: FloatArray) -> FloatArray:
+        """Differentiate at coded settings of shape (n, k): same shape; one row for all."""
+        slope = Stack.from_coefficients(self.curve, x.shape[1]).gradient(x)
+        if self.guard is None:
+            return slope
+        terms = features(x)
+        pulled = terms @ self.covariance
+        rate = self.guard.derivatives(np.einsum("np,np->n", pulled, terms))[1]
+        rising = 2 * np.einsum("npk,np->nk", feature_gradients(x), pulled)
+        result: FloatArray = slope - self.weight * rate[:, None] * rising
+        return result
 
     def take(self, draws: IntArray) -> HardRow:
         """Pick draws, one for each setting to come; a row shared by all stays as it is."""

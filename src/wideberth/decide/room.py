@@ -15,6 +15,7 @@ from wideberth.quadratic.stack import Stack
 from wideberth.study.records import FloatArray
 
 _REFINEMENTS = 40
+_LOOKED_EVERY = 8
 _FOLLOWED = 4
 _MANY_PATTERNS = 6
 
@@ -43,6 +44,8 @@ def worst_in_room(row: HardRow, room: Room, x: FloatArray) -> tuple[float, Float
     points = points[np.argsort(row.value(points), kind="stable")[:_FOLLOWED]]
     for step in range(_REFINEMENTS):
         points = _moved_down(row, points, low, high, 0.25 * 0.7**step)
+        if step % _LOOKED_EVERY == _LOOKED_EVERY - 1 and _settled(row, points, low, high):
+            break
     values = row.value(points)
     lowest = int(values.argmin())
     return float(values[lowest]), points[lowest] - x
@@ -64,6 +67,13 @@ def _patterns(low: FloatArray, high: FloatArray, x: FloatArray) -> FloatArray:
     ends = np.where(signs < 0, low[loose], np.where(signs > 0, high[loose], x[loose]))
     points[:-1, loose] = ends
     return points
+
+
+def _settled(row: HardRow, points: FloatArray, low: FloatArray, high: FloatArray) -> bool:
+    """Tell whether all points (n, k) are corners from which every way into the box leads up."""
+    slope, loose = row.slope(points), high > low
+    held = np.where(points <= low, slope > 0.0, (points >= high) & (slope < 0.0))
+    return bool(held[:, loose].all())
 
 
 def _moved_down(

@@ -18,8 +18,6 @@ from wideberth.decide.region import Region, Room
 from wideberth.decide.room import worst_in_room
 from wideberth.decide.search import HOLDS
 from wideberth.operate.proof import prove_over_box
-from wideberth.quadratic.stack import Stack
-from wideberth.quadratic.terms import feature_gradients, features
 from wideberth.study.records import BoolArray, FloatArray
 
 _ROUNDS = 25
@@ -327,7 +325,7 @@ def _maximised(ground: Ground, places: list[FloatArray], ends: FloatArray) -> Fl
     def held_slope(z: FloatArray) -> FloatArray:
         slopes = []
         for row, place in kept:
-            slope = row_slope(row, _at(z, place))
+            slope = row.slope(_at(z, place))
             slopes.append(np.hstack([slope * (1 - place) / 2, slope * (1 + place) / 2]))
         return np.vstack([*slopes, -tops])
 
@@ -353,17 +351,4 @@ def _maximised(ground: Ground, places: list[FloatArray], ends: FloatArray) -> Fl
 def _at(z: FloatArray, place: FloatArray) -> FloatArray:
     k = place.shape[1]
     result: FloatArray = z[:k] * (1 - place) / 2 + z[k:] * (1 + place) / 2
-    return result
-
-
-def row_slope(row: HardRow, x: FloatArray) -> FloatArray:
-    """Differentiate a row at settings (n, k): same shape."""
-    slope = Stack.from_coefficients(row.curve, x.shape[1]).gradient(x)
-    if row.guard is None:
-        return slope
-    terms, jacobian = features(x), feature_gradients(x)
-    pulled = terms @ row.covariance
-    rate = row.guard.derivatives(np.einsum("np,np->n", pulled, terms))[1]
-    rising = 2 * np.einsum("npk,np->nk", jacobian, pulled)
-    result: FloatArray = slope - row.weight * rate[:, None] * rising
     return result
